@@ -1,0 +1,60 @@
+// SPDX-License-Identifier: Apache-2.0
+// The posterior of one machine: a set of hypotheses over its state, its channels' precisions and conditions.
+// See engine.md in this folder for the method. Pure: no I/O, no clock, no threads; after construction and the
+// first readings no allocation per reading. An engine is a value: a copy is a snapshot, and the same calls on
+// equal engines give equal bits. One engine (and its model's formulas) is used by one thread at a time.
+//
+//   Engine engine(model);                     // throws std::invalid_argument if model->problem() is not
+//   empty engine.set_input(t, 0, 0.06, true); engine.read(t, 1, 2.034, Quality::kGood); engine.estimate(t,
+//   Detail::kFull, estimate);
+#pragma once
+
+#include <cstdint>
+#include <memory>
+#include <vector>
+
+#include "engine/estimate.h"
+#include "engine/model.h"
+
+namespace steelyard::engine {
+
+/// What became of a reading.
+enum class Fate : std::uint8_t {
+  kFused,
+  kSameMeasurement,  ///< repeats the last value sooner than the channel's period: no new information
+  kOutOfRange,       ///< outside the declared range: counted, not fused
+  kNotUsable,        ///< quality bad, out of service or simulated
+};
+
+/// kBrief leaves out what costs most: intervals, peaks, explanations.
+enum class Detail : std::uint8_t { kBrief, kFull };
+
+class Engine {
+ public:
+  explicit Engine(std::shared_ptr<const Model> model);
+  Engine(const Engine& other);
+  Engine& operator=(const Engine& other);
+  Engine(Engine&&) noexcept;
+  Engine& operator=(Engine&&) noexcept;
+  ~Engine();
+
+  /// Times must not fall; values must be finite (both are the caller's to check). A value that is not good
+  /// makes the input unknown within its range from t on.
+  void set_input(TimeNs t, int input, double value, bool good);
+  Fate read(TimeNs t, int channel, double value, Quality quality);
+
+  /// The posterior at t ≥ time(), extrapolated without changing this engine's posterior (scratch storage is
+  /// used, hence not const). Reuses the storage of `out`.
+  void estimate(TimeNs t, Detail detail, Estimate& out);
+
+  [[nodiscard]] TimeNs time() const;  ///< of the newest reading or input; meaningless while !started()
+  [[nodiscard]] bool started() const;
+  [[nodiscard]] double log_evidence() const;  ///< Σ log p(reading | past) over fused readings
+  [[nodiscard]] const Model& model() const;
+
+ private:
+  struct Impl;
+  std::unique_ptr<Impl> impl_;
+};
+
+}  // namespace steelyard::engine

@@ -1,0 +1,173 @@
+// SPDX-License-Identifier: Apache-2.0
+// Storage of hypotheses, growing and shrinking of their vectors, merging by moments.
+#include "engine/hypothesis.h"
+
+#include <algorithm>
+#include <cmath>
+#include <cstring>
+
+#include "engine/normal.h"
+
+namespace steelyard::engine {
+
+static_assert(sizeof(Gamma) == 2 * sizeof(double), "Gammas live in the same storage as the moments");
+
+Layout::Layout(const Model& model)
+    : states(static_cast<int>(model.states.size())),
+      core(states + static_cast<int>(model.inputs.size())),
+      fixed(core),
+      channels(static_cast<int>(model.channels.size())) {
+  bias_at.fill(-1);
+  for (int j = 0; j < channels; ++j)
+    if (model.channels[static_cast<std::size_t>(j)].bias_sd > 0.0)
+      bias_at[static_cast<std::size_t>(j)] = fixed++;
+  max_dim = fixed + channels;
+}
+
+Pool::Pool(const Layout& layout, int capacity)
+    : channels_(layout.channels),
+      mean_size_(static_cast<std::size_t>(layout.max_dim)),
+      cov_size_(mean_size_ * mean_size_),
+      items_(static_cast<std::size_t>(capacity)),
+      block_of_(static_cast<std::size_t>(capacity)) {
+  block_ = mean_size_ + cov_size_ + 2 * static_cast<std::size_t>(channels_);
+  storage_.resize(block_ * items_.size());
+  for (std::size_t i = 0; i < items_.size(); ++i) block_of_[i] = i;
+  point_into_storage();
+}
+
+Pool::Pool(const Pool& other)
+    : channels_(other.channels_),
+      block_(other.block_),
+      mean_size_(other.mean_size_),
+      cov_size_(other.cov_size_),
+      size_(other.size_),
+      storage_(other.storage_),
+      items_(other.items_),
+      block_of_(other.block_of_) {
+  point_into_storage();
+}
+
+Pool& Pool::operator=(const Pool& other) {
+  if (this == &other) return *this;
+  channels_ = other.channels_;
+  block_ = other.block_;
+  mean_size_ = other.mean_size_;
+  cov_size_ = other.cov_size_;
+  size_ = other.size_;
+  storage_ = other.storage_;
+  items_ = other.items_;
+  block_of_ = other.block_of_;
+  point_into_storage();
+  return *this;
+}
+
+void Pool::point_into_storage() {
+  for (std::size_t i = 0; i < items_.size(); ++i) {
+    double* block = storage_.data() + block_ * block_of_[i];
+    items_[i].mean = block;
+    items_[i].cov = block + mean_size_;
+    items_[i].noise = reinterpret_cast<Gamma*>(block + mean_size_ + cov_size_);
+  }
+}
+
+Hypothesis& Pool::append() { return items_[static_cast<std::size_t>(size_++)]; }
+
+void Pool::assign(Hypothesis& to, const Hypothesis& from) const {
+  to.log_weight = from.log_weight;
+  to.conditions = from.conditions;
+  to.mode = from.mode;
+  to.dim = from.dim;
+  to.own_at = from.own_at;
+  const auto dim = static_cast<std::size_t>(from.dim);
+  std::memcpy(to.mean, from.mean, dim * sizeof(double));
+  std::memcpy(to.cov, from.cov, dim * dim * sizeof(double));
+  std::memcpy(to.noise, from.noise, static_cast<std::size_t>(channels_) * sizeof(Gamma));
+}
+
+Hypothesis& Pool::append_copy(const Hypothesis& from) {
+  Hypothesis& to = append();
+  assign(to, from);
+  return to;
+}
+
+void Pool::swap_items(int i, int k) {
+  std::swap(items_[static_cast<std::size_t>(i)], items_[static_cast<std::size_t>(k)]);
+  std::swap(block_of_[static_cast<std::size_t>(i)], block_of_[static_cast<std::size_t>(k)]);
+}
+
+namespace {
+
+// Index in z at which the channel's own number belongs: after those of the channels before it.
+int place_of(const Hypothesis& h, int channel) {
+  for (int j = channel; j < kMaxChannels; ++j)
+    if (h.own_at[static_cast<std::size_t>(j)] >= 0) return h.own_at[static_cast<std::size_t>(j)];
+  return h.dim;
+}
+
+void shift_places(Hypothesis& h, int from, int by) {
+  for (auto& at : h.own_at)
+    if (at >= from) at = static_cast<std::int8_t>(at + by);
+}
+
+}  // namespace
+
+void add_own(Hypothesis& h, int channel, double mean, double variance, const double* cross) {
+  const int at = place_of(h, channel);
+  const int old = h.dim;
+  const int dim = old + 1;
+  // From the last row up, so that no element is overwritten before it has moved.
+  for (int i = dim - 1; i >= 0; --i) {
+    for (int k = dim - 1; k >= 0; --k) {
+      const int oi = i - (i > at);
+      const int ok = k - (k > at);
+      double value;
+      if (i == at && k == at) {
+        value = variance;
+      } else if (i == at) {
+        value = cross[ok];
+      } else if (k == at) {
+        value = cross[oi];
+      } else {
+        value = h.cov[oi * old + ok];
+      }
+      h.cov[i * dim + k] = value;
+    }
+  }
+  for (int i = dim - 1; i > at; --i) h.mean[i] = h.mean[i - 1];
+  h.mean[at] = mean;
+  shift_places(h, at, 1);
+  h.own_at[static_cast<std::size_t>(channel)] = static_cast<std::int8_t>(at);
+  h.dim = dim;
+}
+
+void drop_own(Hypothesis& h, int channel) {
+  const int at = h.own_at[static_cast<std::size_t>(channel)];
+  const int old = h.dim;
+  const int dim = old - 1;
+  for (int i = 0; i < dim; ++i)
+    for (int k = 0; k < dim; ++k) h.cov[i * dim + k] = h.cov[(i + (i >= at)) * old + k + (k >= at)];
+  for (int i = at; i < dim; ++i) h.mean[i] = h.mean[i + 1];
+  h.own_at[static_cast<std::size_t>(channel)] = -1;
+  shift_places(h, at, -1);
+  h.dim = dim;
+}
+
+void merge(Hypothesis& into, const Hypothesis& from, int channels) {
+  const double total = log_sum(into.log_weight, from.log_weight);
+  const double p = std::exp(from.log_weight - total);
+  const int dim = into.dim;
+  for (int i = 0; i < dim; ++i) {
+    const double di = from.mean[i] - into.mean[i];
+    for (int k = 0; k < dim; ++k) {
+      const double dk = from.mean[k] - into.mean[k];
+      const double here = into.cov[i * dim + k];
+      into.cov[i * dim + k] = here + p * (from.cov[i * dim + k] - here + (1.0 - p) * di * dk);
+    }
+  }
+  for (int i = 0; i < dim; ++i) into.mean[i] += p * (from.mean[i] - into.mean[i]);
+  for (int j = 0; j < channels; ++j) into.noise[j] = mix(into.noise[j], from.noise[j], p);
+  into.log_weight = total;
+}
+
+}  // namespace steelyard::engine

@@ -1,0 +1,115 @@
+// SPDX-License-Identifier: Apache-2.0
+// One hypothesis: a condition for every channel and a machine mode, a Gaussian over the state and the offsets
+// that those conditions need, and Gammas of its own. Stored in a pool whose memory is taken once.
+//
+// The Gaussian's vector z is [states | inputs | biases | offsets]. Offsets stand in the order of their
+// channels, so hypotheses with equal conditions have equal layouts and can be merged element by element.
+#pragma once
+
+#include <array>
+#include <cstdint>
+#include <vector>
+
+#include "engine/gamma.h"
+#include "engine/model.h"
+
+namespace steelyard::engine {
+
+/// Where things stand in z, the same for all hypotheses of a model.
+struct Layout {
+  explicit Layout(const Model& model);
+  int states = 0;
+  int core = 0;   ///< states + inputs: what moves by the machine's law
+  int fixed = 0;  ///< core + biases: what every hypothesis carries
+  int channels = 0;
+  int max_dim = 0;                          ///< fixed + channels
+  std::array<int, kMaxChannels> bias_at{};  ///< index in z of a channel's standing bias, −1: none
+};
+
+/// Four bits a channel: the conditions of all channels, cheap to compare.
+class Conditions {
+ public:
+  [[nodiscard]] Condition of(int channel) const {
+    const auto c = static_cast<unsigned>(channel);
+    return static_cast<Condition>((word_[c / 16] >> (4 * (c % 16))) & 15U);
+  }
+  void set(int channel, Condition condition) {
+    const auto c = static_cast<unsigned>(channel);
+    const unsigned shift = 4 * (c % 16);
+    word_[c / 16] = (word_[c / 16] & ~(std::uint64_t{15} << shift)) | (std::uint64_t(condition) << shift);
+  }
+  auto operator<=>(const Conditions&) const = default;
+
+ private:
+  std::array<std::uint64_t, kMaxChannels / 16> word_{};
+};
+
+[[nodiscard]] constexpr bool is_walk(Condition c) {
+  return c == Condition::kCreeping || c == Condition::kOffset || c == Condition::kWandering;
+}
+/// Does a channel in this condition carry a number of its own in z (an offset, or a stuck level)?
+[[nodiscard]] constexpr bool has_own(Condition c) { return is_walk(c) || c == Condition::kStuck; }
+
+struct Hypothesis {
+  double log_weight = 0.0;
+  Conditions conditions;
+  Mode mode = Mode::kUsual;
+  int dim = 0;
+  std::array<std::int8_t, kMaxChannels> own_at{};  ///< index in z of a channel's own number, −1: none
+  double* mean = nullptr;                          ///< dim
+  double* cov = nullptr;                           ///< dim × dim, row-major, full and symmetric
+  Gamma* noise = nullptr;                          ///< by channel
+
+  [[nodiscard]] double& p(int i, int k) { return cov[i * dim + k]; }
+  [[nodiscard]] double p(int i, int k) const { return cov[i * dim + k]; }
+  /// Same conditions and mode: can be merged.
+  [[nodiscard]] bool same_key(const Hypothesis& other) const {
+    return mode == other.mode && conditions == other.conditions;
+  }
+};
+
+/// Hypotheses with storage of their own for up to `capacity` of them. A copy is independent.
+class Pool {
+ public:
+  Pool(const Layout& layout, int capacity);
+  Pool(const Pool& other);
+  Pool& operator=(const Pool& other);
+  Pool(Pool&&) noexcept = default;
+  Pool& operator=(Pool&&) noexcept = default;
+  ~Pool() = default;
+
+  [[nodiscard]] int size() const { return size_; }
+  [[nodiscard]] int capacity() const { return static_cast<int>(items_.size()); }
+  [[nodiscard]] Hypothesis& operator[](int i) { return items_[static_cast<std::size_t>(i)]; }
+  [[nodiscard]] const Hypothesis& operator[](int i) const { return items_[static_cast<std::size_t>(i)]; }
+  /// Appends a hypothesis with unspecified contents; size() < capacity().
+  Hypothesis& append();
+  Hypothesis& append_copy(const Hypothesis& from);
+  void clear() { size_ = 0; }
+  void shrink(int size) { size_ = size; }
+  void swap_items(int i, int k);
+  /// Copies a hypothesis of the same layout into one of this pool.
+  void assign(Hypothesis& to, const Hypothesis& from) const;
+
+ private:
+  void point_into_storage();
+  int channels_ = 0;
+  std::size_t block_ = 0;  ///< doubles a hypothesis: mean, cov, noise
+  std::size_t mean_size_ = 0;
+  std::size_t cov_size_ = 0;
+  int size_ = 0;
+  std::vector<double> storage_;
+  std::vector<Hypothesis> items_;
+  std::vector<std::size_t> block_of_;  ///< which block of storage_ items_[i] uses
+};
+
+/// Gives channel's own number its place in z, with the given moments; `cross` has the covariance with the old
+/// z (dim entries). The channel must not have one yet.
+void add_own(Hypothesis& h, int channel, double mean, double variance, const double* cross);
+/// Takes a channel's own number out of z (marginalises it).
+void drop_own(Hypothesis& h, int channel);
+
+/// Moment-matched merge of `from` into `into` (same key); weights add up.
+void merge(Hypothesis& into, const Hypothesis& from, int channels);
+
+}  // namespace steelyard::engine

@@ -1,0 +1,130 @@
+// SPDX-License-Identifier: Apache-2.0
+// Likelihood and update for one scalar reading (engine.md §4 steps 1–5): a Student-t regular part beside
+// uniform strays, and the variational fixed point of the variational Bayesian adaptive Kalman filter (Särkkä
+// & Nummenmaa 2009) inside each hypothesis.
+#include "engine/likelihood.h"
+
+#include <algorithm>
+#include <cmath>
+
+#include "engine/normal.h"
+
+namespace steelyard::engine {
+namespace {
+
+constexpr double kCoarse = 0.3;  // resolution over predicted sd from which the bin's probability counts
+constexpr int kFixedPointSteps = 8;
+constexpr double kFixedPointTolerance = 1e-3;
+
+}  // namespace
+
+double Likelihood::noise_variance(const Gamma& g, double spec_variance) const {
+  if (!model_.options.learn_precision) return spec_variance;
+  return spec_variance / (model_.options.cap_precision ? mean_below_one(g) : g.mean());
+}
+
+double Likelihood::residual(const Occasion& occasion, double expected) const {
+  const double e = occasion.value - expected;
+  const double turn = model_.channels[static_cast<std::size_t>(occasion.channel)].modulo;
+  return turn > 0.0 ? std::remainder(e, turn) : e;
+}
+
+double Likelihood::log_regular(double e, const Gamma& g, double total_variance, double resolution) const {
+  const double sd = std::sqrt(total_variance);
+  if (resolution > kCoarse * sd)
+    return std::log(std::max(bin_probability(e, sd, resolution), 1e-300) / resolution);
+  if (!model_.options.learn_precision) return log_normal(e, total_variance);
+  return log_student_t(e, g.a, total_variance);
+}
+
+// Updates g and returns the noise variance at the fixed point of (noise variance, gain), which is scalar.
+double Likelihood::learn(Gamma& g, double e, double s, double r, double spec, double weight) const {
+  if (!model_.options.learn_precision) return r;
+  Gamma next = g;
+  for (int i = 0; i < kFixedPointSteps; ++i) {
+    const double gain = s / (s + r);
+    const double kept = e * (1.0 - gain);
+    const double squared = kept * kept + s * (1.0 - gain);
+    next = {g.a + 0.5 * weight, g.b + 0.5 * weight * squared / spec};
+    const double before = r;
+    r = noise_variance(next, spec);
+    if (std::fabs(r - before) <= kFixedPointTolerance * before) break;
+  }
+  g = next;
+  return r;
+}
+
+double Likelihood::influence(const Step& step) const {
+  double sum = 0.0;
+  for (int i = 0; i < layout_.states && i < expected_.slope.size(); ++i)
+    sum += expected_.slope(i) * expected_.column[static_cast<std::size_t>(i)];
+  return step.weight * step.shrink * sum / step.total_variance;
+}
+
+// Moments of the mixture of the updated and the untouched Gaussian.
+void Likelihood::move(Hypothesis& h, const Step& step) const {
+  const double by_mean = step.weight * step.shift / step.total_variance;
+  const double by_cov = (-step.weight * step.shrink * step.total_variance +
+                         step.weight * (1.0 - step.weight) * step.shift * step.shift) /
+                        (step.total_variance * step.total_variance);
+  const double* column = expected_.column.data();
+  for (int i = 0; i < h.dim; ++i) {
+    h.mean[i] += by_mean * column[i];
+    const double scaled = by_cov * column[i];
+    double* row = h.cov + i * h.dim;
+    for (int k = 0; k < h.dim; ++k) row[k] += scaled * column[k];
+  }
+}
+
+double Likelihood::repeat_probability(const Hypothesis& h, const Occasion& o) const {
+  const double plain_noise = model_.options.learn_precision
+                                 ? expected_.spec_variance / h.noise[o.channel].mean()
+                                 : expected_.spec_variance;
+  Occasion last = o;
+  last.value = o.last_value;
+  const double e = residual(last, expected_.mean);
+  const double inside = bin_probability(e, std::sqrt(expected_.variance + plain_noise), o.resolution);
+  return o.regular * inside + (1.0 - o.regular) * o.resolution / o.span;
+}
+
+Absorbed Likelihood::absorb_censored(Hypothesis& h, const Occasion& o, double r) {
+  Step step;
+  step.total_variance = expected_.variance + r;
+  const double sd = std::sqrt(step.total_variance);
+  const double side = o.censoring == Censoring::kBelow ? 1.0 : -1.0;
+  const double z = side * (o.bound - expected_.mean) / sd;
+  const double log_inside = log_normal_cdf(z) + std::log(o.regular);
+  Absorbed out;
+  out.log_likelihood = log_sum(log_inside, std::log((1.0 - o.regular) * o.elsewhere));
+  step.weight = std::exp(log_inside - out.log_likelihood);
+  const double mills = inverse_mills(z);
+  step.shift = -side * mills * sd;
+  step.shrink = std::clamp(mills * (z + mills), 0.0, 1.0);
+  out.influence = influence(step);
+  move(h, step);
+  return out;
+}
+
+Absorbed Likelihood::absorb(Hypothesis& h, const Occasion& o) {
+  const auto j = static_cast<std::size_t>(o.channel);
+  projector_.project(h, o.channel, h.conditions.of(o.channel), o.time_s, expected_);
+  Gamma& g = h.noise[o.channel];
+  const double s = expected_.variance;
+  const double r = noise_variance(g, expected_.spec_variance);
+  if (o.censoring != Censoring::kNone) return absorb_censored(h, o, r);
+  const double e = residual(o, expected_.mean);
+  const double log_inside = std::log(o.regular) + log_regular(e, g, s + r, model_.channels[j].resolution);
+  Absorbed out;
+  out.log_likelihood =
+      o.regular < 1.0 ? log_sum(log_inside, std::log((1.0 - o.regular) * o.elsewhere)) : log_inside;
+  if (!o.first) out.repeat_probability = repeat_probability(h, o);
+  Step step;
+  step.weight = std::exp(log_inside - out.log_likelihood);
+  step.shift = e;
+  step.total_variance = s + learn(g, e, s, r, expected_.spec_variance, step.weight);
+  out.influence = influence(step);
+  move(h, step);
+  return out;
+}
+
+}  // namespace steelyard::engine

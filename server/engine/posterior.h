@@ -1,0 +1,89 @@
+// SPDX-License-Identifier: Apache-2.0
+// The engine's inside: hypotheses and what is remembered of each channel and input.
+#pragma once
+
+#include <array>
+#include <memory>
+#include <vector>
+
+#include "engine/births.h"
+#include "engine/collect.h"
+#include "engine/engine.h"
+#include "engine/likelihood.h"
+#include "engine/motion.h"
+#include "engine/repeats.h"
+
+namespace steelyard::engine {
+
+struct ChannelMemory {
+  bool fused_any = false;
+  double last_value = 0.0;  ///< of the last fused reading
+  bool last_censored = false;
+  TimeNs fused_at = 0;
+  bool seen_any = false;
+  TimeNs seen_at = 0;  ///< of the last usable reading, fused or the same measurement again
+  RepeatRate repeats;
+  double spec_sd = 1.0;  ///< datasheet noise sd at the last reading; scales the walks
+  double freedom = 0.0;  ///< degrees of freedom for signal, decaying with the response time
+  TimeNs freedom_at = 0;
+  std::int64_t out_of_range = 0;
+};
+
+struct InputMemory {
+  bool good = true;
+  bool expires = false;
+  TimeNs good_until = 0;
+};
+
+struct Posterior {
+  explicit Posterior(std::shared_ptr<const Model> model);
+  Posterior(const Posterior& other);
+
+  void start(TimeNs t);
+  /// Fills `next` with the hypotheses moved from predicted_to to t; `now` stays as it is.
+  void predict_next(TimeNs t);
+  void advance(TimeNs t);
+  void split_modes(double dt_s);
+  [[nodiscard]] unsigned unknown_inputs(TimeNs t) const;
+  [[nodiscard]] TimeNs next_expiry(TimeNs from, TimeNs to) const;
+  void set_input(TimeNs t, int input, double value, bool good);
+  void condition_on_input(Hypothesis& h, int at, double value, double variance) const;
+
+  Fate read(TimeNs t, int channel, double value, Quality quality);
+  [[nodiscard]] Occasion occasion(TimeNs t, int channel, double value, Quality quality) const;
+  void fuse(const Occasion& o);
+  void forget_noise(const Occasion& o);
+  void bear_children(const Occasion& o);
+  void absorb_standing(const Occasion& o);
+  void settle_frozen(const Occasion& o, double log_average);
+  void remember(TimeNs t, const Occasion& o);
+  void refresh_walks(int channel);
+  [[nodiscard]] double probability(int channel, Condition condition) const;
+
+  std::shared_ptr<const Model> model;
+  Layout layout;
+  Motion motion;
+  Likelihood likelihood;
+  Births births;
+  Collector collector;
+  Pool now;
+  Pool next;
+  Pool children;
+  Motion::WalkDensity walk_density{};
+  std::vector<ChannelMemory> channels;
+  std::vector<InputMemory> inputs;
+  std::array<bool, kModes> mode_on{};
+  CoreMatrix mode_switch;  ///< P(mode after | mode before) over mode_gap_s
+  double mode_gap_s = -1.0;
+  std::vector<Absorbed> absorbed;
+  bool started = false;
+  TimeNs predicted_to = 0;
+  TimeNs time = 0;
+  double log_evidence = 0.0;
+};
+
+struct Engine::Impl : Posterior {
+  using Posterior::Posterior;
+};
+
+}  // namespace steelyard::engine

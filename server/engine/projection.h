@@ -1,0 +1,38 @@
+// SPDX-License-Identifier: Apache-2.0
+// What a hypothesis expects a channel to read, before the reading: three scalars and one column.
+#pragma once
+
+#include <array>
+
+#include "engine/discretise.h"
+#include "engine/hypothesis.h"
+
+namespace steelyard::engine {
+
+inline constexpr int kMaxDim = kMaxCore + 2 * kMaxChannels;
+
+struct Projection {
+  double mean = 0.0;                     ///< of the noiseless reading
+  double variance = 0.0;                 ///< s: of the noiseless reading
+  double spec_variance = 1.0;            ///< datasheet noise with quantisation: sd² + resolution²/12
+  std::array<double, kMaxDim> column{};  ///< covariance of z with the noiseless reading
+  CoreVector slope;                      ///< effective row over [states | inputs]; empty for stuck
+};
+
+class Projector {
+ public:
+  Projector(const Model& model, const Layout& layout) : model_(model), layout_(layout) {}
+
+  /// As if the channel were in `condition` (a walk needs its own number in z, stuck as well).
+  void project(const Hypothesis& h, int channel, Condition condition, double time_s, Projection& out) const;
+
+  /// Datasheet noise variance where the hypothesis believes the machine to be.
+  [[nodiscard]] double spec_variance(const Hypothesis& h, int channel, double time_s) const;
+
+ private:
+  void regress(const Hypothesis& h, Formula& formula, double modulo, double time_s, Projection& out) const;
+  const Model& model_;
+  const Layout& layout_;
+};
+
+}  // namespace steelyard::engine

@@ -1,0 +1,289 @@
+// SPDX-License-Identifier: Apache-2.0
+// What comes out at a moment (engine.md §5): moments and intervals of the mixture, trust and its reasons.
+#include <algorithm>
+#include <boost/math/special_functions/gamma.hpp>
+#include <cmath>
+
+#include "engine/normal.h"
+#include "engine/posterior.h"
+
+namespace steelyard::engine {
+namespace {
+
+constexpr double kMissedDespiteWell = 0.1;  // P(a reading is lost on the way though the channel is well)
+constexpr double kNegligible = 1e-9;        // weight under which a hypothesis does not move an interval
+constexpr std::size_t kExplanations = 3;
+
+double seconds(TimeNs ns) { return static_cast<double>(ns) * 1e-9; }
+
+// P(x ≤ value) under the mixture's marginal of z's element `at`.
+double mixture_cdf(const Pool& pool, int at, double value) {
+  double sum = 0.0;
+  for (int i = 0; i < pool.size(); ++i) {
+    const double w = std::exp(pool[i].log_weight);
+    if (w < kNegligible) continue;
+    const double sd = std::sqrt(std::max(pool[i].p(at, at), 0.0));
+    const double step = value - pool[i].mean[at];
+    sum += w * (sd > 0.0 ? normal_cdf(step / sd) : (step >= 0.0 ? 1.0 : 0.0));
+  }
+  return sum;
+}
+
+// Bisection from a bracket that holds every component to 8 sd; 60 halvings exhaust a double.
+double mixture_quantile(const Pool& pool, int at, double p, double lo, double hi) {
+  for (int i = 0; i < 60 && hi - lo > 1e-12 * (std::fabs(lo) + std::fabs(hi)); ++i) {
+    const double middle = 0.5 * (lo + hi);
+    (mixture_cdf(pool, at, middle) < p ? lo : hi) = middle;
+  }
+  return 0.5 * (lo + hi);
+}
+
+double mixture_density(const Pool& pool, int at, double value) {
+  double sum = 0.0;
+  for (int i = 0; i < pool.size(); ++i) {
+    const double variance = pool[i].p(at, at);
+    if (pool[i].log_weight < -20.0 || !(variance > 0.0)) continue;
+    sum += std::exp(pool[i].log_weight + log_normal(value - pool[i].mean[at], variance));
+  }
+  return sum;
+}
+
+// Two local maxima, the lesser at least a tenth of the greater, with a valley under half of the lesser
+// between.
+bool two_peaked(const Pool& pool, int at, double lo, double hi) {
+  constexpr int kGrid = 128;
+  double first = 0.0;
+  double valley = 0.0;
+  double second = 0.0;
+  double highest = 0.0;
+  for (int i = 0; i <= kGrid; ++i) {
+    const double d = mixture_density(pool, at, lo + (hi - lo) * i / kGrid);
+    highest = std::max(highest, d);
+    if (second == 0.0 && d >= first) {
+      first = valley = d;
+    } else if (d < valley) {
+      valley = d;
+      second = 0.0;
+    } else if (d > 2.0 * valley) {
+      second = std::max(second, d);
+    }
+    if (second > 0.0 && std::min(first, second) > 0.1 * std::max(highest, second) && valley < 0.5 * first)
+      return true;
+  }
+  return false;
+}
+
+void report_state(const Pool& pool, int at, StateEstimate& out) {
+  double mean = 0.0;
+  for (int i = 0; i < pool.size(); ++i) mean += std::exp(pool[i].log_weight) * pool[i].mean[at];
+  double variance = 0.0;
+  for (int i = 0; i < pool.size(); ++i) {
+    const double w = std::exp(pool[i].log_weight);
+    const double step = pool[i].mean[at] - mean;
+    variance += w * (pool[i].p(at, at) + step * step);
+  }
+  out.mean = mean;
+  out.sd = std::sqrt(std::max(variance, 0.0));
+  out.interval90 = {mean - 1.6448536269514722 * out.sd, mean + 1.6448536269514722 * out.sd};
+  out.two_peaked = false;
+  out.within_needs = 1.0;
+}
+
+void report_interval(const Pool& pool, int at, const StateModel& model, StateEstimate& out) {
+  double lo = out.mean;
+  double hi = out.mean;
+  double narrow = 0.0;
+  for (int i = 0; i < pool.size(); ++i) {
+    const double w = std::exp(pool[i].log_weight);
+    if (w < kNegligible) continue;
+    const double sd = std::sqrt(std::max(pool[i].p(at, at), 0.0));
+    lo = std::min(lo, pool[i].mean[at] - 8.0 * sd);
+    hi = std::max(hi, pool[i].mean[at] + 8.0 * sd);
+    narrow += w * sd * sd;
+  }
+  out.interval90 = {mixture_quantile(pool, at, 0.05, lo, hi), mixture_quantile(pool, at, 0.95, lo, hi)};
+  // Two peaks need components that stand apart by more than their own width.
+  out.two_peaked = narrow < 0.6 * out.sd * out.sd && two_peaked(pool, at, lo, hi);
+  if (model.needs)
+    out.within_needs =
+        mixture_cdf(pool, at, out.mean + *model.needs) - mixture_cdf(pool, at, out.mean - *model.needs);
+}
+
+// Conditions relax while a channel does not read: the two-state chain of sound and not sound.
+struct Relaxation {
+  double stays = 1.0;     ///< P(sound after | sound before)
+  double recovers = 0.0;  ///< P(sound after | not sound before)
+};
+
+Relaxation relax(const ChannelModel& c, const Options& options, double age_s) {
+  int ways = 0;
+  for (int k = 1; k < kConditions; ++k) ways += options.conditions[static_cast<std::size_t>(k)];
+  const double down = ways / (3.0 * c.fails_every_s);
+  const double up = options.conditions[0] ? 1.0 / c.recovers_in_s : 0.0;
+  if (!(up + down > 0.0)) return {};
+  const double settled = up / (up + down);
+  const double fade = std::exp(-(up + down) * age_s);
+  return {settled + (1.0 - settled) * fade, settled * (1.0 - fade)};
+}
+
+double silence(const ChannelModel& c, double age_s) {
+  if (!(c.period_s > 0.0) || age_s <= c.period_s) return 0.0;
+  const double missed = age_s / c.period_s - 1.0;
+  const double log_odds =
+      std::log(-std::expm1(-age_s / c.fails_every_s)) - missed * std::log(kMissedDespiteWell);
+  return 1.0 / (1.0 + std::exp(-log_odds));
+}
+
+// Noise of the channel over the hypotheses: average shape and mean, as in a merge.
+Gamma average_noise(const Pool& pool, int channel) {
+  double a = 0.0;
+  double mean = 0.0;
+  for (int i = 0; i < pool.size(); ++i) {
+    const double w = std::exp(pool[i].log_weight);
+    a += w * pool[i].noise[channel].a;
+    mean += w * pool[i].noise[channel].mean();
+  }
+  return {a, a / mean};
+}
+
+void report_noise(const Gamma& g, const Options& options, double spec_sd, Detail detail,
+                  ChannelEstimate& out) {
+  const double level = !options.learn_precision ? 1.0 : options.cap_precision ? mean_below_one(g) : g.mean();
+  out.noise_sd = spec_sd / std::sqrt(level);
+  out.noise_sd90 = {out.noise_sd, out.noise_sd};
+  if (detail == Detail::kBrief || !options.learn_precision) return;
+  // Quantiles of the precision, cut off at the datasheet's: noise falls as precision rises.
+  const double mass = options.cap_precision ? boost::math::gamma_p(g.a, g.b) : 1.0;
+  const auto quantile = [&](double p) {
+    const double x = boost::math::gamma_p_inv(g.a, std::clamp(p * mass, 1e-300, 1.0 - 1e-16)) / g.b;
+    return options.cap_precision ? std::min(x, 1.0) : x;
+  };
+  out.noise_sd90 = {spec_sd / std::sqrt(quantile(0.95)), spec_sd / std::sqrt(quantile(0.05))};
+}
+
+void report_offset(const Pool& pool, int channel, ChannelEstimate& out) {
+  double weight = 0.0;
+  double mean = 0.0;
+  double square = 0.0;
+  for (int i = 0; i < pool.size(); ++i) {
+    if (!is_walk(pool[i].conditions.of(channel))) continue;
+    const double w = std::exp(pool[i].log_weight);
+    const int at = pool[i].own_at[static_cast<std::size_t>(channel)];
+    weight += w;
+    mean += w * pool[i].mean[at];
+    square += w * (pool[i].p(at, at) + pool[i].mean[at] * pool[i].mean[at]);
+  }
+  out.offset = weight > kNegligible ? mean / weight : 0.0;
+  out.offset_sd =
+      weight > kNegligible ? std::sqrt(std::max(square / weight - out.offset * out.offset, 0.0)) : 0.0;
+}
+
+void report_channel(const Posterior& e, const Pool& pool, int channel, TimeNs t, Detail detail,
+                    ChannelEstimate& out) {
+  const auto j = static_cast<std::size_t>(channel);
+  const auto& c = e.model->channels[j];
+  const auto& options = e.model->options;
+  const auto& memory = e.channels[j];
+  const double a0 = 0.5 * c.prior_readings;
+  const double gap_s = memory.fused_any ? seconds(t - memory.fused_at) : 0.0;
+  const double keep = options.forget ? std::exp2(-gap_s / c.memory_s) : 1.0;
+  const auto level = [&](Gamma g) {
+    if (!options.learn_precision) return 1.0;
+    forget(g, a0, keep);
+    return mean_of_min_with_one(g);
+  };
+  out.probability.fill(0.0);
+  double trusted = 0.0;
+  for (int i = 0; i < pool.size(); ++i) {
+    const double w = std::exp(pool[i].log_weight);
+    const Condition condition = pool[i].conditions.of(channel);
+    out.probability[static_cast<std::size_t>(condition)] += w;
+    if (condition == Condition::kSound && w > 1e-12) trusted += w * level(pool[i].noise[channel]);
+  }
+  const double sound = std::min(out.probability[0], 1.0);
+  const Relaxation r = relax(c, options, gap_s);
+  const double fresh = (1.0 - sound) * r.recovers;
+  const double relaxed = sound * r.stays + fresh;
+  out.trust = std::clamp(trusted * r.stays + fresh * level({a0, a0}), 0.0, 1.0);
+  const double others = sound < 1.0 ? (1.0 - relaxed) / (1.0 - sound) : 0.0;
+  for (int k = 1; k < kConditions; ++k) out.probability[static_cast<std::size_t>(k)] *= others;
+  out.probability[0] = relaxed;
+  Gamma noise = average_noise(pool, channel);
+  if (options.forget) forget(noise, a0, keep);
+  report_noise(noise, options, memory.spec_sd, detail, out);
+  report_offset(pool, channel, out);
+  out.age_s = memory.seen_any ? seconds(t - memory.seen_at) : -1.0;
+  out.silent = memory.seen_any ? silence(c, out.age_s) : 0.0;
+  out.influence = memory.freedom * std::exp(-seconds(t - memory.freedom_at) / e.model->response_s);
+  out.out_of_range = memory.out_of_range;
+}
+
+void share_influence(std::vector<ChannelEstimate>& channels) {
+  double total = 0.0;
+  for (const auto& c : channels) total += c.influence;
+  for (auto& c : channels) c.influence = total > 0.0 ? c.influence / total : 0.0;
+}
+
+// Hypotheses with equal conditions stand next to each other: their modes are summed over.
+void report_explanations(const Pool& pool, int channels, std::vector<Explanation>& out) {
+  out.clear();
+  for (int begin = 0; begin < pool.size();) {
+    int end = begin;
+    Explanation found;
+    int heaviest = begin;
+    for (; end < pool.size() && pool[end].conditions == pool[begin].conditions; ++end) {
+      found.probability += std::exp(pool[end].log_weight);
+      if (pool[end].log_weight > pool[heaviest].log_weight) heaviest = end;
+    }
+    const Hypothesis& h = pool[heaviest];
+    for (int j = 0; j < channels; ++j) {
+      const int at = h.own_at[static_cast<std::size_t>(j)];
+      const Condition condition = h.conditions.of(j);
+      if (condition == Condition::kSound) continue;
+      found.findings.push_back(
+          {j, condition, at >= 0 ? h.mean[at] : 0.0, at >= 0 ? std::sqrt(std::max(h.p(at, at), 0.0)) : 0.0});
+    }
+    out.push_back(std::move(found));
+    begin = end;
+  }
+  std::stable_sort(out.begin(), out.end(),
+                   [](const Explanation& a, const Explanation& b) { return a.probability > b.probability; });
+  if (out.size() > kExplanations) out.resize(kExplanations);
+}
+
+}  // namespace
+
+void Engine::estimate(TimeNs t, Detail detail, Estimate& out) {
+  Posterior& e = *impl_;
+  const bool ahead = e.started && t > e.predicted_to;
+  if (ahead) e.predict_next(t);
+  const Pool& pool = ahead ? e.next : e.now;
+  out.time_ns = t;
+  out.states.resize(e.model->states.size());
+  out.inputs.resize(e.model->inputs.size());
+  out.inputs_sd.resize(e.model->inputs.size());
+  out.channels.resize(e.model->channels.size());
+  for (int i = 0; i < e.layout.states; ++i) {
+    auto& state = out.states[static_cast<std::size_t>(i)];
+    report_state(pool, i, state);
+    if (detail == Detail::kFull)
+      report_interval(pool, i, e.model->states[static_cast<std::size_t>(i)], state);
+  }
+  StateEstimate input;
+  for (int i = e.layout.states; i < e.layout.core; ++i) {
+    report_state(pool, i, input);
+    out.inputs[static_cast<std::size_t>(i - e.layout.states)] = input.mean;
+    out.inputs_sd[static_cast<std::size_t>(i - e.layout.states)] = input.sd;
+  }
+  for (int j = 0; j < e.layout.channels; ++j)
+    report_channel(e, pool, j, t, detail, out.channels[static_cast<std::size_t>(j)]);
+  share_influence(out.channels);
+  out.mode.fill(0.0);
+  for (int i = 0; i < pool.size(); ++i)
+    out.mode[static_cast<std::size_t>(pool[i].mode)] += std::exp(pool[i].log_weight);
+  out.hypotheses = pool.size();
+  out.explanations.clear();
+  if (detail == Detail::kFull) report_explanations(pool, e.layout.channels, out.explanations);
+}
+
+}  // namespace steelyard::engine

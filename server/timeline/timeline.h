@@ -1,0 +1,67 @@
+// SPDX-License-Identifier: Apache-2.0
+// Order: puts readings of several sources in the order of time, recognises what was sent twice, applies
+// declared delays, and drives one engine. One thread at a time.
+#pragma once
+
+#include <cstdint>
+#include <functional>
+#include <memory>
+#include <span>
+#include <string>
+#include <string_view>
+#include <vector>
+
+#include "engine/engine.h"
+#include "rig/rig.h"
+
+namespace steelyard::timeline {
+
+/// One value from one source. `source` is a number from Timeline::source_number().
+struct Reading {
+  engine::TimeNs time_ns = 0;
+  rig::Signal signal;
+  double value = 0.0;
+  engine::Quality quality = engine::Quality::kGood;
+  std::uint32_t source = 0;
+  std::uint64_t sequence = 0;  ///< rises within a source
+};
+
+/// What became of a reading. Everything before kDuplicate counts as taken.
+enum class Outcome : std::uint8_t {
+  kFused,
+  kSameMeasurement,
+  kOutOfRange,
+  kNotUsable,
+  kInput,      ///< taken as an input's value
+  kDuplicate,  ///< (source, sequence) was taken before; quietly ignored
+  kNotFinite,  ///< refused
+  kTooOld,     ///< refused: older than what has been fused (until the timeline can rewind)
+};
+
+class Timeline {
+ public:
+  explicit Timeline(std::shared_ptr<const rig::Rig> rig);
+
+  /// Finds or makes the number of a source.
+  [[nodiscard]] std::uint32_t source_number(std::string_view name);
+  /// Highest sequence taken from a source; 0: none.
+  [[nodiscard]] std::uint64_t position(std::uint32_t source) const;
+
+  /// Called after the last channel reading of each distinct time within one run().
+  using OnMoment = std::function<void(engine::TimeNs)>;
+
+  /// Sorts `batch` (time less delay; inputs before channels; bytewise channel name; source name; sequence) and
+  /// runs it. outcomes[i] belongs to batch[i] as sorted. Readings within a batch may come in any order.
+  void run(std::span<Reading> batch, std::vector<Outcome>& outcomes, const OnMoment& on_moment = {});
+
+  /// The machine now (at the newest reading), or extrapolated to t ≥ clock().
+  void estimate(engine::TimeNs t, engine::Detail detail, engine::Estimate& out);
+
+  /// The rig's clock: the newest accepted reading time as stamped. Meaningless while !started().
+  [[nodiscard]] engine::TimeNs clock() const;
+  [[nodiscard]] bool started() const;
+  [[nodiscard]] const rig::Rig& rig() const;
+  [[nodiscard]] const engine::Engine& engine() const;
+};
+
+}  // namespace steelyard::timeline
