@@ -168,6 +168,7 @@ void LogReader::read_row(LogRow& row) {
                                     "; must have " + std::to_string(width_) + " like the header");
     return;
   }
+  row.time_column = csv_.cells()[time_].column;
   const std::optional<engine::TimeNs> time_ns = read_time();
   if (!time_ns) return;
   if (long_) {

@@ -38,6 +38,7 @@ struct LogReading {
 struct LogRow {
   std::uint64_t number = 0;  ///< of the row, from 1, not counting the header; wrong rows count, empty lines do not
   int line = 0;
+  int time_column = 0;  ///< where its time stands, for messages
   std::vector<LogReading> readings;
 };
 

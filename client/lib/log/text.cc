@@ -13,7 +13,8 @@ namespace steelyard::client {
 namespace {
 
 using engine::TimeNs;
-using Wide = __int128;  // seconds × 1e9 of any accepted text fits with room to spare
+// Seconds × 1e9 of any accepted text fits with room to spare.
+__extension__ typedef __int128 Wide;
 
 constexpr std::int64_t kNsPerS = 1'000'000'000;
 constexpr std::size_t kMaxSecondDigits = 12;  // 1e12 s is far beyond what nanoseconds in 64 bits can tell

@@ -1,0 +1,60 @@
+// SPDX-License-Identifier: Apache-2.0
+// Rows of results. Names need no quoting: they are [a-z][a-z0-9_]*.
+#include "cli/columns.h"
+
+#include <algorithm>
+#include <initializer_list>
+
+#include "timeline/words.h"
+
+namespace steelyard::client {
+namespace {
+
+void append_cells(std::string& out, std::initializer_list<double> values) {
+  for (const double value : values) {
+    out += ',';
+    append_number(out, value);
+  }
+}
+
+}  // namespace
+
+void append_estimate_header(std::string& out, const Names& names) {
+  out += "time";
+  for (const std::string& state : names.states) out += "," + state + "," + state + ".sd";
+  for (const std::string& channel : names.channels) out += ",trust." + channel;
+  out += '\n';
+}
+
+void append_estimate_row(std::string& out, const engine::Estimate& estimate, TimeStyle style) {
+  out += time_text(estimate.time_ns, style);
+  for (const engine::StateEstimate& state : estimate.states) append_cells(out, {state.mean, state.sd});
+  for (const engine::ChannelEstimate& channel : estimate.channels) append_cells(out, {channel.trust});
+  out += '\n';
+}
+
+void append_channel_header(std::string& out) {
+  out +=
+      "time,channel,trust,p.sound,p.creeping,p.offset,p.wandering,p.stuck,p.frozen,p.silent,noise_sd,noise_sd.lo,"
+      "noise_sd.hi,offset,offset.sd,influence,age,status\n";
+}
+
+void append_channel_rows(std::string& out, const Names& names, const engine::Estimate& estimate, TimeStyle style) {
+  const std::string time = time_text(estimate.time_ns, style);
+  const std::size_t count = std::min(names.channels.size(), estimate.channels.size());
+  for (std::size_t i = 0; i < count; ++i) {
+    const engine::ChannelEstimate& channel = estimate.channels[i];
+    out += time + "," + names.channels[i];
+    append_cells(out, {channel.trust});
+    for (const double probability : channel.probability) append_cells(out, {probability});
+    append_cells(out, {channel.silent, channel.noise_sd, channel.noise_sd90.lo, channel.noise_sd90.hi, channel.offset,
+                       channel.offset_sd, channel.influence});
+    out += ',';
+    if (channel.age_s >= 0.0) append_number(out, channel.age_s);  // empty: no reading yet
+    out += ",";
+    out += timeline::ne107_status(channel);
+    out += '\n';
+  }
+}
+
+}  // namespace steelyard::client

@@ -1,0 +1,128 @@
+// SPDX-License-Identifier: Apache-2.0
+// The row space h, hF, hF², … is built vector by vector (Krylov), each new one made orthogonal to those before:
+// powers of F are never formed, whose sizes would drown each other.
+#include "cli/observe.h"
+
+#include <cmath>
+#include <span>
+#include <variant>
+
+namespace steelyard::client {
+namespace {
+
+using Eigen::MatrixXd;
+using Eigen::RowVectorXd;
+using Index = Eigen::Index;
+
+constexpr double kNegligible = 1e-6;  // numerical derivatives are good to about 1e-8
+constexpr double kStep = 1e-4;        // of start_sd, for those derivatives
+
+double law_value(const engine::Law& law, std::span<const double> states, std::span<const double> inputs) {
+  if (const auto* formula = std::get_if<std::shared_ptr<engine::Formula>>(&law)) {
+    return *formula ? (*formula)->evaluate(states, inputs, 0.0) : 0.0;
+  }
+  return 0.0;
+}
+
+/// Gradient with respect to the states, each in units of its start_sd.
+RowVectorXd gradient(const engine::Model& model, const engine::Law& law, std::vector<double> states,
+                     const std::vector<double>& inputs) {
+  RowVectorXd result = RowVectorXd::Zero(static_cast<Index>(states.size()));
+  for (std::size_t i = 0; i < states.size(); ++i) {
+    const double scale = model.states[i].start_sd;
+    double slope = 0.0;
+    if (const auto* affine = std::get_if<engine::AffineForm>(&law)) {
+      slope = i < affine->on_states.size() ? affine->on_states[i] : 0.0;
+    } else {
+      const double at = states[i];
+      const double step = kStep * scale;
+      states[i] = at + step;
+      const double above = law_value(law, states, inputs);
+      states[i] = at - step;
+      slope = (above - law_value(law, states, inputs)) / (2.0 * step);
+      states[i] = at;
+    }
+    // Where a formula has no finite slope (a square root at 0) this point tells nothing of it.
+    if (std::isfinite(slope)) result(static_cast<Index>(i)) = slope * scale;
+  }
+  return result;
+}
+
+/// The part of `row` that is orthogonal to the rows of `space`; twice, for accuracy.
+RowVectorXd beyond(const MatrixXd& space, RowVectorXd row) {
+  for (int pass = 0; pass < 2 && space.rows() > 0; ++pass) row -= (row * space.transpose()) * space;
+  return row;
+}
+
+bool extend(MatrixXd& space, const RowVectorXd& row) {
+  const double length = row.norm();
+  if (!(length > 0.0)) return false;
+  const RowVectorXd rest = beyond(space, row / length);
+  if (!(rest.norm() > kNegligible)) return false;
+  space.conservativeResize(space.rows() + 1, row.cols());
+  space.row(space.rows() - 1) = rest / rest.norm();
+  return true;
+}
+
+}  // namespace
+
+Linearised::Linearised(const engine::Model& model, const std::vector<double>& states) {
+  std::vector<double> inputs;
+  for (const engine::InputModel& input : model.inputs) inputs.push_back(input.start);
+  const auto n = static_cast<Index>(states.size());
+  motion_ = MatrixXd::Zero(n, n);
+  for (Index i = 0; i < n; ++i) {
+    const engine::StateModel& state = model.states[static_cast<std::size_t>(i)];
+    motion_.row(i) = gradient(model, state.rate, states, inputs) * (model.response_s / state.start_sd);
+  }
+  reads_ = MatrixXd::Zero(static_cast<Index>(model.channels.size()), n);
+  for (Index j = 0; j < reads_.rows(); ++j) {
+    const RowVectorXd row = gradient(model, model.channels[static_cast<std::size_t>(j)].reads, states, inputs);
+    if (row.norm() > 0.0) reads_.row(j) = row / row.norm();
+  }
+}
+
+MatrixXd Linearised::shown_space(const std::vector<int>& channels) const {
+  MatrixXd space(0, motion_.cols());
+  for (const int channel : channels) extend(space, reads_.row(channel));
+  const double size = motion_.norm();
+  // Rows that are added are followed on in turn; there are at most as many as states.
+  for (Index i = 0; i < space.rows(); ++i) {
+    const RowVectorXd next = space.row(i) * motion_;
+    if (next.norm() > kNegligible * size) extend(space, next);
+  }
+  return space;
+}
+
+std::vector<bool> Linearised::shown_states(const std::vector<int>& channels) const {
+  const MatrixXd space = shown_space(channels);
+  std::vector<bool> shown;
+  for (Index i = 0; i < motion_.cols(); ++i) {
+    const RowVectorXd axis = RowVectorXd::Unit(motion_.cols(), i);
+    shown.push_back(beyond(space, axis).norm() < 1e-4);
+  }
+  return shown;
+}
+
+bool Linearised::foretold(int channel, const std::vector<int>& by) const {
+  const RowVectorXd row = reads_.row(channel);
+  return row.norm() > 0.0 && beyond(shown_space(by), row).norm() < 1e-4;
+}
+
+std::vector<double> start_of(const engine::Model& model) {
+  std::vector<double> states;
+  for (const engine::StateModel& state : model.states) states.push_back(state.start);
+  return states;
+}
+
+std::vector<double> near_start_of(const engine::Model& model) {
+  std::vector<double> states;
+  double share = 0.31;  // of start_sd; another one for each state
+  for (const engine::StateModel& state : model.states) {
+    states.push_back(state.start + share * state.start_sd);
+    share = share * 1.17 > 0.6 ? 0.23 : share * 1.17;
+  }
+  return states;
+}
+
+}  // namespace steelyard::client

@@ -1,0 +1,36 @@
+// SPDX-License-Identifier: Apache-2.0
+// Which states the readings of some channels determine (observability, Kalman 1960): those in the space spanned by
+// the rows h, hF, hF², … of the machine linearised at a point. Nonlinear machines may show more away from the
+// point than at it. Standing biases and offsets are left out: this tells what a sound channel shows.
+#pragma once
+
+#include <Eigen/Core>
+#include <vector>
+
+#include "engine/model.h"
+
+namespace steelyard::client {
+
+/// The machine linearised at `states`, in units of each state's start_sd and of the response time.
+class Linearised {
+ public:
+  /// Inputs have their start values. Not for concurrent use with other users of the model's formulas.
+  Linearised(const engine::Model& model, const std::vector<double>& states);
+
+  /// Orthonormal rows that span what the channels show.
+  [[nodiscard]] Eigen::MatrixXd shown_space(const std::vector<int>& channels) const;
+  /// By state: is it determined by these channels?
+  [[nodiscard]] std::vector<bool> shown_states(const std::vector<int>& channels) const;
+  /// Do these channels tell what `channel` ought to read?
+  [[nodiscard]] bool foretold(int channel, const std::vector<int>& by) const;
+
+ private:
+  Eigen::MatrixXd motion_;  // states × states
+  Eigen::MatrixXd reads_;   // channels × states, rows of length 1 (or 0: reads no state here)
+};
+
+/// The start state, and a point near it that has no symmetry by chance.
+[[nodiscard]] std::vector<double> start_of(const engine::Model& model);
+[[nodiscard]] std::vector<double> near_start_of(const engine::Model& model);
+
+}  // namespace steelyard::client

@@ -1,0 +1,34 @@
+// SPDX-License-Identifier: Apache-2.0
+// A progress bar on stderr, on a terminal only, and messages that do not tear it.
+#pragma once
+
+#include <chrono>
+#include <cstdint>
+#include <string>
+
+namespace steelyard::client {
+
+class Progress {
+ public:
+  /// `total` 0: not known, no bar.
+  Progress(std::string what, std::uint64_t total);
+  ~Progress();
+  Progress(const Progress&) = delete;
+  Progress& operator=(const Progress&) = delete;
+
+  /// Redraws at most ten times a second.
+  void show(std::uint64_t done);
+  /// A line on stderr.
+  void say(const std::string& line);
+
+ private:
+  void clear();
+
+  std::string what_;
+  std::uint64_t total_;
+  bool on_;
+  bool drawn_ = false;
+  std::chrono::steady_clock::time_point next_{};
+};
+
+}  // namespace steelyard::client

@@ -1,0 +1,273 @@
+// SPDX-License-Identifier: Apache-2.0
+// steelyard replay: a log through the engine, without a server. The log streams by; what waits in memory is one
+// horizon of it.
+#include <memory>
+#include <optional>
+#include <string>
+#include <utility>
+#include <vector>
+
+#include "cli/columns.h"
+#include "cli/commands.h"
+#include "cli/files.h"
+#include "cli/output.h"
+#include "cli/progress.h"
+#include "cli/refusals.h"
+#include "cli/signals.h"
+#include "lib/log/log_csv.h"
+#include "lib/log/reorder.h"
+#include "lib/log/stretches.h"
+#include "timeline/timeline.h"
+#include "timeline/words.h"
+
+namespace steelyard::client {
+namespace {
+
+constexpr std::uint64_t kRowsPerStep = 256;  // rows read before the engine runs on
+constexpr double kNsPerS = 1e9;
+
+struct Options {
+  std::string rig;
+  std::string log;
+  std::string out;
+  std::string channels;
+  bool words = false;
+  TimeStyle time = TimeStyle::kSeconds;
+  bool settled = false;  // not yet there
+  std::string report;    // not yet there
+  std::string episodes;  // not yet there
+};
+
+Names names_of_model(const engine::Model& model) {
+  Names names;
+  for (const engine::StateModel& state : model.states) names.states.push_back(state.name);
+  for (const engine::ChannelModel& channel : model.channels) names.channels.push_back(channel.name);
+  return names;
+}
+
+/// One run from a log to the outputs.
+class Replay {
+ public:
+  Replay(const Options& options, std::shared_ptr<const rig::Rig> rig, LogFile& log)
+      : options_(options),
+        rig_(std::move(rig)),
+        names_(names_of_model(*rig_->model)),
+        timeline_(rig_),
+        reorder_(*rig_),
+        stretches_(names_.channels.size(), static_cast<engine::TimeNs>(rig_->response_s * kNsPerS)),
+        out_(options.out),
+        channels_(options.channels),
+        progress_("replay", log.bytes),
+        refusals_(progress_),
+        file_(log.name),
+        reader_(*log.stream, log.name, names_of(rig_), [this](const rig::Problem& one) { wrong(one); }),
+        out_of_range_(names_.channels.size()) {}
+
+  int run() {
+    if (!reader_.open()) return kWrongInput;
+    header_is_read_ = true;
+    if (!open_outputs()) return kFailed;
+    read_all();
+    if (interrupted()) {
+      progress_.say("steelyard: stopped");
+      return kFailed;
+    }
+    if (going()) step(true);
+    return finish();
+  }
+
+ private:
+  void wrong(const rig::Problem& problem) {
+    if (header_is_read_) {
+      refusals_.add(problem);
+    } else {
+      progress_.say(problem.text());
+    }
+  }
+
+  bool open_outputs() {
+    for (Output* const output : {&out_, &channels_, &words_}) {
+      if (output == &channels_ && !with_channels()) continue;
+      if (output->open()) continue;
+      complain(output->error());
+      return false;
+    }
+    std::string text;
+    append_estimate_header(text, names_);
+    out_.write(text);
+    if (!with_channels()) return true;
+    text.clear();
+    append_channel_header(text);
+    channels_.write(text);
+    return true;
+  }
+
+  [[nodiscard]] bool with_channels() const { return !options_.channels.empty(); }
+  [[nodiscard]] bool going() const { return !interrupted() && !out_.failed() && !channels_.failed(); }
+
+  void read_all() {
+    LogRow row;
+    std::uint64_t rows = 0;
+    while (going() && reader_.next(row)) {
+      for (const LogReading& reading : row.readings) {
+        if (!reorder_.add(reading)) {
+          refusals_.add(too_old(*rig_, file_, row, reading, reorder_.behind_s(reading)));
+        }
+      }
+      if (++rows % kRowsPerStep != 0) continue;
+      step(false);
+      progress_.show(reader_.bytes_read());
+    }
+  }
+
+  void step(bool last) {
+    ready_.clear();
+    if (last) {
+      reorder_.release_rest(ready_);
+    } else {
+      reorder_.release(ready_);
+    }
+    if (ready_.empty()) return;
+    timeline_.run(ready_, outcomes_, [this](engine::TimeNs time_ns) { moment(time_ns); });
+    for (std::size_t i = 0; i < outcomes_.size(); ++i) count(ready_[i], outcomes_[i]);
+  }
+
+  void count(const timeline::Reading& reading, timeline::Outcome outcome) {
+    if (outcome == timeline::Outcome::kOutOfRange && !reading.signal.is_input) {
+      ++out_of_range_[static_cast<std::size_t>(reading.signal.index)];
+    }
+    if (outcome == timeline::Outcome::kNotFinite || outcome == timeline::Outcome::kTooOld) {
+      refusals_.add({file_, 0, 0, signal_name(*rig_, reading.signal),
+                     "reading of " + time_text(reading.time_ns, options_.time) + " could not be taken"});
+    }
+  }
+
+  void moment(engine::TimeNs time_ns) {
+    if (!going()) return;
+    const auto detail = with_channels() ? engine::Detail::kFull : engine::Detail::kBrief;
+    timeline_.estimate(time_ns, detail, estimate_);
+    text_.clear();
+    append_estimate_row(text_, estimate_, options_.time);
+    out_.write(text_);
+    if (with_channels()) {
+      text_.clear();
+      append_channel_rows(text_, names_, estimate_, options_.time);
+      channels_.write(text_);
+    }
+    if (options_.words) follow();
+  }
+
+  void follow() {
+    views_.clear();
+    for (const engine::ChannelEstimate& channel : estimate_.channels) views_.push_back(view_of(channel));
+    stretches_.add(
+        estimate_.time_ns, views_,
+        [this](int channel) { return timeline::channel_words(*rig_, channel, estimate_); },
+        [this](const Change& change) { tell(time_text(change.time_ns, options_.time) + "  " + change.words); });
+  }
+
+  /// Words go where the data does not.
+  void tell(const std::string& line) {
+    if (options_.out.empty()) {
+      progress_.say(line);
+    } else {
+      words_.write(line + "\n");
+      words_.flush();
+    }
+  }
+
+  void summarise() {
+    std::vector<std::string> units;
+    for (const engine::ChannelModel& channel : rig_->model->channels) units.push_back(channel.unit);
+    const std::vector<Stretch> all = stretches_.finish();
+    std::string text = stretches_text(all, stretches_.left_out(), names_.channels, units, [this](engine::TimeNs t) {
+      return time_text(t, options_.time);
+    });
+    text.pop_back();  // tell() ends the line
+    tell(text);
+  }
+
+  void notes() {
+    for (std::size_t i = 0; i < out_of_range_.size(); ++i) {
+      if (out_of_range_[i] == 0) continue;
+      progress_.say("steelyard: " + names_.channels[i] + ": " + std::to_string(out_of_range_[i]) +
+                    " readings outside its range were not fused");
+    }
+    refusals_.close();
+  }
+
+  int finish() {
+    if (options_.words && going()) summarise();
+    notes();
+    for (Output* const output : {&out_, &channels_}) {
+      if (output == &channels_ && !with_channels()) continue;
+      if (output->finish()) continue;
+      complain(output->error());
+      return kFailed;
+    }
+    if (reader_.read_failed()) return kFailed;
+    return refusals_.count() > 0 ? kWrongInput : kDone;
+  }
+
+  const Options& options_;
+  std::shared_ptr<const rig::Rig> rig_;
+  Names names_;
+  timeline::Timeline timeline_;
+  Reorder reorder_;
+  Stretches stretches_;
+  Output out_;
+  Output channels_;
+  Output words_{""};
+  Progress progress_;
+  Refusals refusals_;
+  std::string file_;
+  LogReader reader_;
+  bool header_is_read_ = false;
+  std::vector<std::uint64_t> out_of_range_;
+  std::vector<timeline::Reading> ready_;
+  std::vector<timeline::Outcome> outcomes_;
+  std::vector<ChannelView> views_;
+  engine::Estimate estimate_;
+  std::string text_;
+};
+
+int replay(const Options& options) {
+  if (options.settled || !options.report.empty() || !options.episodes.empty()) {
+    complain("replay: --settled, --report and --episodes are not there yet");
+    return kWrongInput;
+  }
+  if (!options.out.empty() && options.out == options.channels) {
+    complain("replay: --out and --channels are the same file");
+    return kWrongInput;
+  }
+  std::shared_ptr<const rig::Rig> rig = load_rig_file(options.rig);
+  if (!rig) return kWrongInput;
+  LogFile log;
+  if (!open_log(options.log, log)) return kWrongInput;
+  return Replay(options, std::move(rig), log).run();
+}
+
+}  // namespace
+
+void add_replay(CLI::App& app, Run& run) {
+  CLI::App* const command = app.add_subcommand("replay", "Run a log through the engine and write the estimates as CSV");
+  const auto options = std::make_shared<Options>();
+  command->add_option("--rig", options->rig, "Rig file (YAML)")->required();
+  command->add_option("--log", options->log, "Log (CSV, long or wide; - is stdin)")->required();
+  command->add_option("--out", options->out, "File for the estimates; stdout if not given");
+  command->add_option("--channels", options->channels, "File for one row per time and channel: trust, probabilities, …");
+  command->add_flag("--words", options->words,
+                    "Tell each change of a channel and the stretches in which it was not sound, in words, on stderr "
+                    "(on stdout if --out is given)");
+  add_time_option(*command, options->time);
+  command->add_flag("--settled", options->settled, "Not there yet");
+  command->add_option("--report", options->report, "Not there yet");
+  command->add_option("--episodes", options->episodes, "Not there yet");
+  command->footer(
+      "A cell of the log that cannot be used refuses its own reading alone: the first 10 are shown, all are counted,\n"
+      "and when everything else has been used and written the exit code is 2. A header that cannot be used ends the\n"
+      "replay at once, also with 2. Rows may be out of order within the rig's horizon; older ones are refused.");
+  command->callback([options, &run] { run = [options] { return replay(*options); }; });
+}
+
+}  // namespace steelyard::client
