@@ -85,9 +85,6 @@ struct ChannelModel {
   double modulo = 0.0;           ///< full turn of an angle; 0: not an angle
   double period_s = 0.0;         ///< time between two measurements; 0: not declared
   double delay_s = 0.0;          ///< a reading stamped t tells of t − delay_s; the timeline applies it
-  /// A 4-20 mA signal: a value beyond −2.5 % or +106.25 % of the range is its transmitter's own failure signal
-  /// (NAMUR NE 43, from memory), so quality bad. That decodes a signal; it is no limit on a residual.
-  bool live_zero = false;
   double uncertain_ratio = 0.5;  ///< P(regular) given quality `uncertain`; the rest is uniform over the range
   double fails_every_s = 30 * 86400.0;
   double recovers_in_s = 1000.0;
