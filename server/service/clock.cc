@@ -1,0 +1,14 @@
+// SPDX-License-Identifier: Apache-2.0
+// The machine's clocks.
+#include "service/clock.h"
+
+namespace steelyard::service {
+
+engine::TimeNs SystemClock::now_ns() const {
+  const auto since_1970 = std::chrono::system_clock::now().time_since_epoch();
+  return std::chrono::duration_cast<std::chrono::nanoseconds>(since_1970).count();
+}
+
+SteadyTime SystemClock::steady() const { return std::chrono::steady_clock::now(); }
+
+}  // namespace steelyard::service
