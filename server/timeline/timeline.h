@@ -13,6 +13,7 @@
 
 #include "engine/engine.h"
 #include "rig/rig.h"
+#include "timeline/sequence_set.h"
 
 namespace steelyard::timeline {
 
@@ -44,14 +45,14 @@ class Timeline {
 
   /// Finds or makes the number of a source.
   [[nodiscard]] std::uint32_t source_number(std::string_view name);
-  /// Highest sequence taken from a source; 0: none.
+  /// Highest sequence taken from a source; 0: none. `source` must come from source_number().
   [[nodiscard]] std::uint64_t position(std::uint32_t source) const;
 
   /// Called after the last channel reading of each distinct time within one run().
   using OnMoment = std::function<void(engine::TimeNs)>;
 
-  /// Sorts `batch` (time less delay; inputs before channels; bytewise channel name; source name; sequence) and
-  /// runs it. outcomes[i] belongs to batch[i] as sorted. Readings within a batch may come in any order.
+  /// Sorts `batch` (time less delay; inputs before channels; bytewise channel name; source name; sequence)
+  /// and runs it. outcomes[i] belongs to batch[i] as sorted. Readings within a batch may come in any order.
   void run(std::span<Reading> batch, std::vector<Outcome>& outcomes, const OnMoment& on_moment = {});
 
   /// The machine now (at the newest reading), or extrapolated to t ≥ clock().
@@ -62,6 +63,29 @@ class Timeline {
   [[nodiscard]] bool started() const;
   [[nodiscard]] const rig::Rig& rig() const;
   [[nodiscard]] const engine::Engine& engine() const;
+
+ private:
+  struct Source {
+    std::string name;
+    SequenceSet taken;
+  };
+  struct Item {
+    Reading reading;
+    engine::TimeNs moment_ns = 0;  ///< of the machine: the stamp less the channel's delay
+    bool duplicate = false;
+  };
+  [[nodiscard]] bool before(const Item& a, const Item& b) const;
+  [[nodiscard]] engine::TimeNs moment_of(const Reading& reading) const;
+  Outcome take(const Item& item);
+  Outcome take_channel(const Item& item);
+
+  std::shared_ptr<const rig::Rig> rig_;
+  engine::Engine engine_;
+  std::vector<int> rank_;  ///< of each channel's name in bytewise order
+  std::vector<Source> sources_;
+  std::vector<Item> items_;  ///< scratch of run()
+  bool started_ = false;
+  engine::TimeNs clock_ns_ = 0;
 };
 
 }  // namespace steelyard::timeline
