@@ -55,10 +55,13 @@ struct Loaded {
   std::vector<Problem> problems;
 };
 
-/// Never throws for anything in `text`. `file` is used in messages alone.
+/// Never throws for anything in `text`. `file` is used in messages alone. States, inputs and channels have
+/// the order of the text; those of a JSON object, whose maps come in any order, the bytewise order of their
+/// names.
 [[nodiscard]] Loaded load(std::string_view text, std::string_view file);
 
-/// The same description as JSON (a proto3 JSON form of steelyard.v1.Rig); text must be one that load() accepts.
+/// The same description as JSON (a proto3 JSON form of steelyard.v1.Rig); text must be one that load()
+/// accepts.
 [[nodiscard]] std::string to_json(std::string_view text);
 
 /// "250 ms", "60 s", "5 min", "2 h", "30 d" → seconds; nullopt if it is not of this form.
