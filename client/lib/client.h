@@ -8,13 +8,15 @@
 //   }
 //   steelyard::v1::PutRigResponse put;
 //   if (auto status = client.put_rig({.text = yaml, .file_name = "basin.yaml"}, put); !status.ok()) { ... }
-//   for (const auto& problem : put.problems()) std::cerr << problem.text() << '\n';   // wrong: nothing was put
+//   for (const auto& problem : put.problems()) std::cerr << problem.text() << '\n';   // wrong: nothing was
+//   put
 //
 //   auto feed = client.feed({.rig = "basin", .source = "plc-1", .channels = {"sonic", "radar"}});
-//   if (auto status = feed->open(); !status.ok()) { ... }              // feed.h: goes on where the service says
+//   if (auto status = feed->open(); !status.ok()) { ... }              // feed.h: goes on where the service
+//   says
 //
-// Errors are grpc::Status; the codes' meanings stand at the top of proto/steelyard/v1/service.proto. Nothing here
-// throws, save std::bad_alloc.
+// Errors are grpc::Status; the codes' meanings stand at the top of proto/steelyard/v1/service.proto. Nothing
+// here throws, save std::bad_alloc.
 #pragma once
 
 #include <grpcpp/channel.h>
@@ -54,8 +56,8 @@ class Client {
   /// Connects to nothing yet. `address` is HOST:PORT.
   explicit Client(const std::string& address, Patience patience = {});
 
-  /// Waits, with back-off, until the service answers; UNAVAILABLE if it does not within patience.connect, CANCELLED
-  /// when `stop` is requested.
+  /// Waits, with back-off, until the service answers; UNAVAILABLE if it does not within patience.connect,
+  /// CANCELLED when `stop` is requested.
   [[nodiscard]] grpc::Status connect(std::stop_token stop = {});
 
   /// OK also for a wrong description: look at answer.problems() first; if there are any, nothing was put.
@@ -66,13 +68,14 @@ class Client {
   [[nodiscard]] grpc::Status remove_rig(const std::string& name, const std::string& author = {},
                                         const std::string& reason = {});
   /// The machine at `time_ns`, or at the rig's clock if that is empty.
-  [[nodiscard]] grpc::Status estimate(const std::string& rig, std::optional<std::int64_t> time_ns, v1::Moment& moment);
+  [[nodiscard]] grpc::Status estimate(const std::string& rig, std::optional<std::int64_t> time_ns,
+                                      v1::Moment& moment);
 
   /// Return false to end the watch. Called on the thread that called watch().
   using OnUpdate = std::function<bool(const v1::WatchResponse&)>;
 
-  /// Blocks until the watch ends: OK if on_update ended it or `stop` was requested, else the service's status. It does
-  /// not reconnect: the caller decides whether a gap matters.
+  /// Blocks until the watch ends: OK if on_update ended it or `stop` was requested, else the service's
+  /// status. It does not reconnect: the caller decides whether a gap matters.
   [[nodiscard]] grpc::Status watch(const v1::WatchRequest& request, const OnUpdate& on_update,
                                    std::stop_token stop = {});
 
