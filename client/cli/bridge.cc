@@ -25,7 +25,8 @@ engine::StateEstimate state_of(const v1::StateEstimate& wire) {
 engine::ChannelEstimate channel_of(const v1::ChannelEstimate& wire) {
   engine::ChannelEstimate channel;
   channel.trust = wire.trust();
-  const auto count = std::min<std::size_t>(static_cast<std::size_t>(wire.probability_size()), engine::kConditions);
+  const auto count =
+      std::min<std::size_t>(static_cast<std::size_t>(wire.probability_size()), engine::kConditions);
   for (std::size_t i = 0; i < count; ++i) channel.probability[i] = wire.probability(static_cast<int>(i));
   channel.silent = wire.silent();
   channel.noise_sd = wire.noise_sd();
@@ -94,7 +95,8 @@ std::shared_ptr<const rig::Rig> fetch_rig(Client& client, const std::string& nam
   rig::Loaded loaded = rig::load(answer.file(), name);
   if (loaded.rig) return loaded.rig;
   const std::string why = loaded.problems.empty() ? "no reason given" : loaded.problems.front().text();
-  status = grpc::Status(grpc::StatusCode::INTERNAL, "the service's rig cannot be used by this version: " + why);
+  status =
+      grpc::Status(grpc::StatusCode::INTERNAL, "the service's rig cannot be used by this version: " + why);
   return nullptr;
 }
 

@@ -1,5 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
-// What came over the wire, as the structures that the outputs are made of; and errors of the service as exit codes.
+// What came over the wire, as the structures that the outputs are made of; and errors of the service as exit
+// codes.
 #pragma once
 
 #include <grpcpp/support/status.h>
@@ -25,7 +26,7 @@ struct Picture {
   engine::TimeNs clock_ns = 0;     ///< newest accepted reading
   double behind_s = 0.0;
   bool started = false;
-  engine::Estimate estimate;       ///< without inputs and explanations
+  engine::Estimate estimate;  ///< without inputs and explanations
 };
 
 [[nodiscard]] Picture picture_of(const v1::Moment& moment);
@@ -34,6 +35,7 @@ struct Picture {
 [[nodiscard]] int fail_with(const std::string& what, const grpc::Status& status);
 
 /// The rig of that name from the service, checked here; null, with `status` set, if it cannot be had.
-[[nodiscard]] std::shared_ptr<const rig::Rig> fetch_rig(Client& client, const std::string& name, grpc::Status& status);
+[[nodiscard]] std::shared_ptr<const rig::Rig> fetch_rig(Client& client, const std::string& name,
+                                                        grpc::Status& status);
 
 }  // namespace steelyard::client

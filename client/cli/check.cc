@@ -3,28 +3,23 @@
 #include <algorithm>
 #include <array>
 #include <charconv>
-#include <cstdio>
+#include <iterator>
 #include <memory>
 #include <string>
+#include <system_error>
+#include <utility>
 #include <vector>
 
 #include "cli/commands.h"
 #include "cli/files.h"
 #include "cli/observe.h"
 #include "cli/output.h"
-#include "lib/log/text.h"
 
 namespace steelyard::client {
 namespace {
 
 constexpr double kHour_s = 3600.0;
 constexpr double kDay_s = 86400.0;
-
-std::string number(double value) {
-  std::string out;
-  append_number(out, value);
-  return out;
-}
 
 std::string digits(double value, int significant) {
   std::array<char, 64> buffer;
@@ -33,15 +28,11 @@ std::string digits(double value, int significant) {
   return error == std::errc() ? std::string(buffer.data(), end) : "?";
 }
 
+/// For people: six digits say all that a description can mean.
+std::string number(double value) { return digits(value, 6); }
+
 std::string with_unit(double value, const std::string& unit) {
   return unit.empty() ? number(value) : number(value) + " " + unit;
-}
-
-/// A duration as it may be written in the rig and, beside it, in hours and days.
-std::string long_duration(double seconds) {
-  std::string out = rig::duration_text(seconds) + " (" + digits(seconds / kHour_s, 4) + " h";
-  if (seconds >= kDay_s) out += ", " + digits(seconds / kDay_s, 4) + " d";
-  return out + ")";
 }
 
 std::string joined(const std::vector<std::string>& words, const char* none) {
@@ -49,6 +40,19 @@ std::string joined(const std::vector<std::string>& words, const char* none) {
   std::string out;
   for (const std::string& word : words) out += (out.empty() ? "" : ", ") + word;
   return out;
+}
+
+std::string counted(std::size_t count, const char* what) {
+  return std::to_string(count) + " " + what + (count == 1 ? "" : "s");
+}
+
+/// A duration as it may be written in the rig and, beside it, in hours and days.
+std::string long_duration(double seconds) {
+  const std::string text = rig::duration_text(seconds);
+  std::vector<std::string> also;
+  if (!text.ends_with(" h")) also.push_back(digits(seconds / kHour_s, 4) + " h");
+  if (!text.ends_with(" d") && seconds >= kDay_s) also.push_back(digits(seconds / kDay_s, 4) + " d");
+  return also.empty() ? text : text + " (" + joined(also, "") + ")";
 }
 
 /// The whole report on one rig.
@@ -76,8 +80,8 @@ class Report {
   void line(const std::string& text) { out_ += text + "\n"; }
 
   void machine() {
-    line("rig " + rig_.name + ": " + std::to_string(model_.states.size()) + " states, " +
-         std::to_string(model_.inputs.size()) + " inputs, " + std::to_string(model_.channels.size()) + " channels");
+    line("rig " + rig_.name + ": " + counted(model_.states.size(), "state") + ", " +
+         counted(model_.inputs.size(), "input") + ", " + counted(model_.channels.size(), "channel"));
     line("  response  " + long_duration(rig_.response_s));
     line("  horizon   " + long_duration(rig_.horizon_s) + ", lateness accepted");
     line("  lag       " + long_duration(rig_.lag_s) + ", of settled estimates");
@@ -91,7 +95,8 @@ class Report {
     for (std::size_t i = 0; i < model_.states.size(); ++i) {
       const engine::StateModel& state = model_.states[i];
       std::string text = "  " + state.name + ": starts at " + number(state.start) + " ± " +
-                         with_unit(state.start_sd, state.unit) + ", unrest " + number(state.unrest) + " per √s";
+                         with_unit(state.start_sd, state.unit) + ", unrest " + number(state.unrest) +
+                         " per √s";
       if (state.needs) text += ", needs ± " + with_unit(*state.needs, state.unit);
       line(text);
       if (!shown[i]) caution(state.name + ": no channel shows this state, not even all together");
@@ -102,13 +107,15 @@ class Report {
     if (model_.inputs.empty()) return;
     line("\ninputs");
     for (const engine::InputModel& input : model_.inputs) {
-      std::string text = "  " + input.name + ": " + with_unit(input.start, input.unit) + " until its first value, sd " +
-                         number(input.sd) + ", ";
-      text += input.period_s > 0.0 ? "a value holds " + rig::duration_text(input.period_s) + ", then it is unknown"
-                                   : "a value holds until the next";
+      std::string text = "  " + input.name + ": " + with_unit(input.start, input.unit) +
+                         " until its first value, sd " + number(input.sd) + ", ";
+      text += input.period_s > 0.0
+                  ? "a value holds " + rig::duration_text(input.period_s) + ", then it is unknown"
+                  : "a value holds until the next";
       text += " within " + number(input.lo) + " to " + with_unit(input.hi, input.unit);
       line(text);
-      if (!(input.period_s > 0.0)) caution(input.name + ": has no period, so a lost signal passes for a steady one");
+      if (!(input.period_s > 0.0))
+        caution(input.name + ": has no period, so a lost signal passes for a steady one");
     }
   }
 
@@ -174,14 +181,16 @@ class Report {
       if (!somewhere[i]) continue;
       names.push_back(model_.states[i].name + (at_start[i] ? "" : " (away from the start state)"));
     }
-    const auto rank = std::max(at_start_.shown_space(channels).rows(), near_start_.shown_space(channels).rows());
+    const auto rank =
+        std::max(at_start_.shown_space(channels).rows(), near_start_.shown_space(channels).rows());
     return joined(names, "no state by itself") + " (rank " + std::to_string(rank) + " of " +
            std::to_string(model_.states.size()) + ")";
   }
 
   std::vector<int> all_but(int channel) const {
     std::vector<int> others;
-    std::copy_if(all_.begin(), all_.end(), std::back_inserter(others), [channel](int one) { return one != channel; });
+    std::copy_if(all_.begin(), all_.end(), std::back_inserter(others),
+                 [channel](int one) { return one != channel; });
     return others;
   }
 
@@ -199,8 +208,9 @@ class Report {
     const engine::ChannelModel& model = model_.channels[static_cast<std::size_t>(channel)];
     const std::vector<int> others = all_but(channel);
     if (!at_start_.foretold(channel, others) && !near_start_.foretold(channel, others)) {
-      caution(model.name + ": no other channel tells what it ought to read, so its offset cannot be told from a "
-                           "change of the machine");
+      caution(model.name +
+              ": no other channel tells what it ought to read, so its offset cannot be told from a "
+              "change of the machine");
     }
     if (!(model.period_s > 0.0)) caution(model.name + ": has no period, so its silence is not judged");
     if (!(model.resolution > 0.0)) {
@@ -209,7 +219,8 @@ class Report {
     if (!(model.bias_sd > 0.0)) {
       caution(model.name + ": has no bias_sd, so a standing difference from the others counts as a fault");
     }
-    if (model.delay_s > 0.0) caution(model.name + ": has a delay, which replay can do and the service cannot yet");
+    if (model.delay_s > 0.0)
+      caution(model.name + ": has a delay, which replay can do and the service cannot yet");
   }
 
   void modes() {
@@ -220,8 +231,8 @@ class Report {
 
   void mode(const char* name, const engine::ModeModel& mode) {
     if (!mode.on) return line(std::string("  ") + name + ": none");
-    line(std::string("  ") + name + ": every " + long_duration(mode.every_s) + ", for " + long_duration(mode.last_s) +
-         ", unrest times " + number(mode.times));
+    line(std::string("  ") + name + ": every " + long_duration(mode.every_s) + ", for " +
+         long_duration(mode.last_s) + ", unrest times " + number(mode.times));
   }
 
   void caution(std::string text) { cautions_.push_back(std::move(text)); }
@@ -229,7 +240,9 @@ class Report {
   void cautions() {
     line("\ncautions");
     for (const std::string& text : cautions_) line("  " + text);
-    line("  Sensors that fail together in the same way can outvote a right one; keep one on another principle.");
+    line(
+        "  Sensors that fail together in the same way can outvote a right one; keep one on another "
+        "principle.");
     line("  What no channel and no law of the machine shows is not seen: keep calibrating.");
     line("  Trust is a probability under this rig: replay your own logs before you rely on it.");
     line("  This advises and is no safety function: trips and interlocks must not depend on it.");
@@ -259,7 +272,8 @@ int check(const std::string& path) {
 
 void add_check(CLI::App& app, Run& run) {
   CLI::App* const command = app.add_subcommand(
-      "check", "Say what a rig means: linear or not, what each channel shows, what is lost without it, the defaults");
+      "check",
+      "Say what a rig means: linear or not, what each channel shows, what is lost without it, the defaults");
   const auto path = std::make_shared<std::string>();
   command->add_option("RIG", *path, "Rig file (YAML)")->required();
   command->callback([path, &run] { run = [path] { return check(*path); }; });

@@ -35,11 +35,13 @@ void append_estimate_row(std::string& out, const engine::Estimate& estimate, Tim
 
 void append_channel_header(std::string& out) {
   out +=
-      "time,channel,trust,p.sound,p.creeping,p.offset,p.wandering,p.stuck,p.frozen,p.silent,noise_sd,noise_sd.lo,"
+      "time,channel,trust,p.sound,p.creeping,p.offset,p.wandering,p.stuck,p.frozen,p.silent,noise_sd,noise_"
+      "sd.lo,"
       "noise_sd.hi,offset,offset.sd,influence,age,status\n";
 }
 
-void append_channel_rows(std::string& out, const Names& names, const engine::Estimate& estimate, TimeStyle style) {
+void append_channel_rows(std::string& out, const Names& names, const engine::Estimate& estimate,
+                         TimeStyle style) {
   const std::string time = time_text(estimate.time_ns, style);
   const std::size_t count = std::min(names.channels.size(), estimate.channels.size());
   for (std::size_t i = 0; i < count; ++i) {
@@ -47,8 +49,8 @@ void append_channel_rows(std::string& out, const Names& names, const engine::Est
     out += time + "," + names.channels[i];
     append_cells(out, {channel.trust});
     for (const double probability : channel.probability) append_cells(out, {probability});
-    append_cells(out, {channel.silent, channel.noise_sd, channel.noise_sd90.lo, channel.noise_sd90.hi, channel.offset,
-                       channel.offset_sd, channel.influence});
+    append_cells(out, {channel.silent, channel.noise_sd, channel.noise_sd90.lo, channel.noise_sd90.hi,
+                       channel.offset, channel.offset_sd, channel.influence});
     out += ',';
     if (channel.age_s >= 0.0) append_number(out, channel.age_s);  // empty: no reading yet
     out += ",";

@@ -22,6 +22,7 @@ void append_estimate_row(std::string& out, const engine::Estimate& estimate, Tim
 
 /// time,channel,trust,p.sound,…: one row a channel.
 void append_channel_header(std::string& out);
-void append_channel_rows(std::string& out, const Names& names, const engine::Estimate& estimate, TimeStyle style);
+void append_channel_rows(std::string& out, const Names& names, const engine::Estimate& estimate,
+                         TimeStyle style);
 
 }  // namespace steelyard::client

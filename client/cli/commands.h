@@ -1,6 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
-// The subcommands. Each add_… puts one into the command line and, when it is chosen, sets `run` to what it does;
-// run() returns the exit code.
+// The subcommands. Each add_… puts one into the command line and, when it is chosen, sets `run` to what it
+// does; run() returns the exit code.
 #pragma once
 
 #include <CLI/CLI.hpp>

@@ -1,7 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
-// steelyard feed: sends a log to a service, in the order of time, as fast as it takes it or at the pace of the log.
-// A reading's sequence number is its place in that order, so a second run of the same log goes on where the first
-// one ended, and a third one finds everything taken.
+// steelyard feed: sends a log to a service, in the order of time, as fast as it takes it or at the pace of
+// the log. A reading's sequence number is its place in that order, so a second run of the same log goes on
+// where the first one ended, and a third one finds everything taken.
 #include <algorithm>
 #include <array>
 #include <charconv>
@@ -26,13 +26,12 @@
 #include "cli/refusals.h"
 #include "cli/signals.h"
 #include "lib/client.h"
+#include "lib/clock.h"
 #include "lib/log/log_csv.h"
 #include "lib/log/reorder.h"
 
 namespace steelyard::client {
 namespace {
-
-using Clock = std::chrono::steady_clock;
 
 constexpr std::size_t kMostBatchRows = 65536;  // the service takes no more
 constexpr std::size_t kUsualBatchRows = 1024;
@@ -133,11 +132,11 @@ class Pace {
   bool wait_for(engine::TimeNs time_ns) {
     if (!first_ns_) {
       first_ns_ = time_ns;
-      begin_ = Clock::now();
+      begin_ = steady_now();
     }
     const double after_s = static_cast<double>(time_ns - *first_ns_) * 1e-9 / times_;
     while (!interrupted()) {
-      const double left_s = after_s - std::chrono::duration<double>(Clock::now() - begin_).count();
+      const double left_s = after_s - std::chrono::duration<double>(steady_now() - begin_).count();
       if (left_s <= 0.0) return true;
       std::this_thread::sleep_for(std::chrono::duration<double>(std::min(left_s, 0.1)));
     }
@@ -147,13 +146,14 @@ class Pace {
  private:
   double times_;
   std::optional<engine::TimeNs> first_ns_;
-  Clock::time_point begin_;
+  SteadyTime begin_;
 };
 
 /// One log on its way to one rig.
 class Sending {
  public:
-  Sending(const Options& options, double times, Client& client, std::shared_ptr<const rig::Rig> rig, LogFile& log)
+  Sending(const Options& options, double times, Client& client, std::shared_ptr<const rig::Rig> rig,
+          LogFile& log)
       : rig_(std::move(rig)),
         reorder_(*rig_),
         batch_(rig_->model->inputs.size()),
@@ -187,7 +187,8 @@ class Sending {
 
   void on_break(const grpc::Status& status) {
     // On a thread of the feed's: stderr alone, and a line in one piece.
-    complain(status.ok() ? "connected again" : "connection lost (" + status.error_message() + "); trying again");
+    complain(status.ok() ? "connected again"
+                         : "connection lost (" + status.error_message() + "); trying again");
   }
 
   int fail(const std::string& what, const grpc::Status& status) {
@@ -256,7 +257,8 @@ class Sending {
   int finish() {
     refusals_.close();
     const FeedProgress progress = feed_->progress();
-    for (const std::string& name : progress.unknown_channels) say(name + ": the service's rig has no such channel");
+    for (const std::string& name : progress.unknown_channels)
+      say(name + ": the service's rig has no such channel");
     const std::size_t shown = std::min<std::size_t>(progress.refusals.size(), Refusals::kShown);
     for (std::size_t i = 0; i < shown; ++i) {
       const v1::Refused& one = progress.refusals[i];
@@ -284,7 +286,8 @@ class Sending {
 int feed(Options options) {
   const std::optional<double> times = parse_pace(options.pace);
   if (!times) {
-    complain("feed: --pace: is " + shown(options.pace) + "; must be real, fast or x and a number, such as x60");
+    complain("feed: --pace: is " + shown(options.pace) +
+             "; must be real, fast or x and a number, such as x60");
     return kWrongInput;
   }
   if (options.source.empty() && options.log == "-") {
@@ -292,7 +295,8 @@ int feed(Options options) {
     return kWrongInput;
   }
   if (options.source.size() > kMostSourceBytes) {
-    complain("feed: --source: has " + std::to_string(options.source.size()) + " bytes; must have at most 255");
+    complain("feed: --source: has " + std::to_string(options.source.size()) +
+             " bytes; must have at most 255");
     return kWrongInput;
   }
   LogFile log;
@@ -319,12 +323,16 @@ void add_feed(CLI::App& app, Run& run) {
   command->add_option("--to", options->to, "Address of the service, HOST:PORT")->required();
   command->add_option("--rig", options->rig, "Name of a rig that the service has")->required();
   command->add_option("--log", options->log, "Log (CSV, long or wide; - is stdin)")->required();
-  command->add_option("--pace", options->pace, "real: at the pace of the log; fast: as fast as it is taken (default); xN: N times the pace of the log");
+  command->add_option("--pace", options->pace,
+                      "real: at the pace of the log; fast: as fast as it is taken (default); xN: N times the "
+                      "pace of the log");
   command->add_option("--source", options->source,
                       "Who feeds; the file's name and a hash of its first 4 KiB if not given");
   command->footer(
-      "Connects for up to 30 s and after a break goes on by itself; run again, it goes on where it ended. Exit 0: all\n"
-      "is taken. Exit 2: all else is taken, but some readings were refused (shown on stderr), or the log or rig is wrong.");
+      "Connects for up to 30 s and after a break goes on by itself; run again, it goes on where it ended. "
+      "Exit 0: all\n"
+      "is taken. Exit 2: all else is taken, but some readings were refused (shown on stderr), or the log or "
+      "rig is wrong.");
   command->callback([options, &run] { run = [options] { return feed(*options); }; });
 }
 

@@ -78,11 +78,12 @@ const std::string& signal_name(const rig::Rig& rig, const rig::Signal& signal) {
   return signal.is_input ? rig.model->inputs[index].name : rig.model->channels[index].name;
 }
 
-rig::Problem too_old(const rig::Rig& rig, const std::string& file, const LogRow& row, const LogReading& reading,
-                     double behind_s) {
+rig::Problem too_old(const rig::Rig& rig, const std::string& file, const LogRow& row,
+                     const LogReading& reading, double behind_s) {
   return {file, row.line, row.time_column, signal_name(rig, reading.signal),
           "lies " + rig::duration_text(std::round(behind_s * 1e3) / 1e3) +
-              " behind the newest row; must lie within the horizon, which is " + rig::duration_text(rig.horizon_s)};
+              " behind the newest row; must lie within the horizon, which is " +
+              rig::duration_text(rig.horizon_s)};
 }
 
 }  // namespace steelyard::client

@@ -19,10 +19,10 @@ namespace steelyard::client {
 
 /// A log that is open for reading; "-" is stdin.
 struct LogFile {
-  std::string name;                   ///< for messages
+  std::string name;  ///< for messages
   std::ifstream file;
   std::istream* stream = nullptr;
-  std::uint64_t bytes = 0;            ///< 0: not known
+  std::uint64_t bytes = 0;  ///< 0: not known
 };
 /// False after telling stderr why.
 [[nodiscard]] bool open_log(const std::string& path, LogFile& log);

@@ -1,5 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
-// steelyard: the command. Data goes to stdout, messages to stderr; exit 0 done, 1 failed, 2 wrong usage or input.
+// steelyard: the command. Data goes to stdout, messages to stderr; exit 0 done, 1 failed, 2 wrong usage or
+// input.
 #include <cstdio>
 #include <exception>
 #include <new>
@@ -10,7 +11,8 @@
 namespace {
 
 constexpr const char* kAbout =
-    "Weighs the readings of overlapping sensors: one estimate with honest error bars, and how far each channel\n"
+    "Weighs the readings of overlapping sensors: one estimate with honest error bars, and how far each "
+    "channel\n"
     "can be trusted.";
 constexpr const char* kFooter =
     "Exit codes: 0 done, 1 failed, 2 wrong usage or input. Messages go to stderr, data to stdout.\n"

@@ -1,6 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
-// The row space h, hF, hF², … is built vector by vector (Krylov), each new one made orthogonal to those before:
-// powers of F are never formed, whose sizes would drown each other.
+// The row space h, hF, hF², … is built vector by vector (Krylov), each new one made orthogonal to those
+// before: powers of F are never formed, whose sizes would drown each other.
 #include "cli/observe.h"
 
 #include <cmath>
@@ -77,7 +77,8 @@ Linearised::Linearised(const engine::Model& model, const std::vector<double>& st
   }
   reads_ = MatrixXd::Zero(static_cast<Index>(model.channels.size()), n);
   for (Index j = 0; j < reads_.rows(); ++j) {
-    const RowVectorXd row = gradient(model, model.channels[static_cast<std::size_t>(j)].reads, states, inputs);
+    const RowVectorXd row =
+        gradient(model, model.channels[static_cast<std::size_t>(j)].reads, states, inputs);
     if (row.norm() > 0.0) reads_.row(j) = row / row.norm();
   }
 }

@@ -1,7 +1,8 @@
 // SPDX-License-Identifier: Apache-2.0
-// Which states the readings of some channels determine (observability, Kalman 1960): those in the space spanned by
-// the rows h, hF, hF², … of the machine linearised at a point. Nonlinear machines may show more away from the
-// point than at it. Standing biases and offsets are left out: this tells what a sound channel shows.
+// Which states the readings of some channels determine (observability, Kalman 1960): those in the space
+// spanned by the rows h, hF, hF², … of the machine linearised at a point. Nonlinear machines may show more
+// away from the point than at it. Standing biases and offsets are left out: this tells what a sound channel
+// shows.
 #pragma once
 
 #include <Eigen/Core>

@@ -7,8 +7,9 @@
 
 namespace steelyard::client {
 
-/// Writes to a temporary file beside `path` and renames it in finish(); without finish() nothing is left behind.
-/// What exists and is no regular file (a pipe, a device) is written directly. An empty path is stdout.
+/// Writes to a temporary file beside `path` and renames it in finish(); without finish() nothing is left
+/// behind. What exists and is no regular file (a pipe, a device) is written directly. An empty path is
+/// stdout.
 ///
 ///   Output out(path);
 ///   if (!out.open()) return fail(out.error());

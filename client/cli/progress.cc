@@ -17,7 +17,7 @@ Progress::~Progress() { clear(); }
 
 void Progress::show(std::uint64_t done) {
   if (!on_) return;
-  const auto now = std::chrono::steady_clock::now();
+  const SteadyTime now = steady_now();
   if (now < next_) return;
   next_ = now + std::chrono::milliseconds(100);
   constexpr std::uint64_t kWidth = 40;

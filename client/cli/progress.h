@@ -2,9 +2,10 @@
 // A progress bar on stderr, on a terminal only, and messages that do not tear it.
 #pragma once
 
-#include <chrono>
 #include <cstdint>
 #include <string>
+
+#include "lib/clock.h"
 
 namespace steelyard::client {
 
@@ -28,7 +29,7 @@ class Progress {
   std::uint64_t total_;
   bool on_;
   bool drawn_ = false;
-  std::chrono::steady_clock::time_point next_{};
+  SteadyTime next_{};
 };
 
 }  // namespace steelyard::client

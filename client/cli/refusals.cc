@@ -12,7 +12,8 @@ void Refusals::add(const rig::Problem& problem) {
 
 void Refusals::close() {
   if (count_ == 0) return;
-  std::string line = "steelyard: " + std::to_string(count_) + (count_ == 1 ? " refusal" : " refusals") + " in the log";
+  std::string line =
+      "steelyard: " + std::to_string(count_) + (count_ == 1 ? " refusal" : " refusals") + " in the log";
   if (count_ > kShown) line += ", of which the first " + std::to_string(kShown) + " are shown";
   progress_.say(line + "; everything else was used");
 }

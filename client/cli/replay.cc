@@ -1,6 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
-// steelyard replay: a log through the engine, without a server. The log streams by; what waits in memory is one
-// horizon of it.
+// steelyard replay: a log through the engine, without a server. The log streams by; what waits in memory is
+// one horizon of it.
 #include <memory>
 #include <optional>
 #include <string>
@@ -53,6 +53,7 @@ class Replay {
         rig_(std::move(rig)),
         names_(names_of_model(*rig_->model)),
         timeline_(rig_),
+        source_(timeline_.source_number(log.name)),
         reorder_(*rig_),
         stretches_(names_.channels.size(), static_cast<engine::TimeNs>(rig_->response_s * kNsPerS)),
         out_(options.out),
@@ -128,6 +129,7 @@ class Replay {
       reorder_.release(ready_);
     }
     if (ready_.empty()) return;
+    for (timeline::Reading& reading : ready_) reading.source = source_;
     timeline_.run(ready_, outcomes_, [this](engine::TimeNs time_ns) { moment(time_ns); });
     for (std::size_t i = 0; i < outcomes_.size(); ++i) count(ready_[i], outcomes_[i]);
   }
@@ -163,7 +165,9 @@ class Replay {
     stretches_.add(
         estimate_.time_ns, views_,
         [this](int channel) { return timeline::channel_words(*rig_, channel, estimate_); },
-        [this](const Change& change) { tell(time_text(change.time_ns, options_.time) + "  " + change.words); });
+        [this](const Change& change) {
+          tell(time_text(change.time_ns, options_.time) + "  " + change.words);
+        });
   }
 
   /// Words go where the data does not.
@@ -180,9 +184,8 @@ class Replay {
     std::vector<std::string> units;
     for (const engine::ChannelModel& channel : rig_->model->channels) units.push_back(channel.unit);
     const std::vector<Stretch> all = stretches_.finish();
-    std::string text = stretches_text(all, stretches_.left_out(), names_.channels, units, [this](engine::TimeNs t) {
-      return time_text(t, options_.time);
-    });
+    std::string text = stretches_text(all, stretches_.left_out(), names_.channels, units,
+                                      [this](engine::TimeNs t) { return time_text(t, options_.time); });
     text.pop_back();  // tell() ends the line
     tell(text);
   }
@@ -213,6 +216,7 @@ class Replay {
   std::shared_ptr<const rig::Rig> rig_;
   Names names_;
   timeline::Timeline timeline_;
+  std::uint32_t source_;
   Reorder reorder_;
   Stretches stretches_;
   Output out_;
@@ -250,23 +254,29 @@ int replay(const Options& options) {
 }  // namespace
 
 void add_replay(CLI::App& app, Run& run) {
-  CLI::App* const command = app.add_subcommand("replay", "Run a log through the engine and write the estimates as CSV");
+  CLI::App* const command =
+      app.add_subcommand("replay", "Run a log through the engine and write the estimates as CSV");
   const auto options = std::make_shared<Options>();
   command->add_option("--rig", options->rig, "Rig file (YAML)")->required();
   command->add_option("--log", options->log, "Log (CSV, long or wide; - is stdin)")->required();
   command->add_option("--out", options->out, "File for the estimates; stdout if not given");
-  command->add_option("--channels", options->channels, "File for one row per time and channel: trust, probabilities, …");
-  command->add_flag("--words", options->words,
-                    "Tell each change of a channel and the stretches in which it was not sound, in words, on stderr "
-                    "(on stdout if --out is given)");
+  command->add_option("--channels", options->channels,
+                      "File for one row per time and channel: trust, probabilities, …");
+  command->add_flag(
+      "--words", options->words,
+      "Tell each change of a channel and the stretches in which it was not sound, in words, on stderr "
+      "(on stdout if --out is given)");
   add_time_option(*command, options->time);
   command->add_flag("--settled", options->settled, "Not there yet");
   command->add_option("--report", options->report, "Not there yet");
   command->add_option("--episodes", options->episodes, "Not there yet");
   command->footer(
-      "A cell of the log that cannot be used refuses its own reading alone: the first 10 are shown, all are counted,\n"
-      "and when everything else has been used and written the exit code is 2. A header that cannot be used ends the\n"
-      "replay at once, also with 2. Rows may be out of order within the rig's horizon; older ones are refused.");
+      "A cell of the log that cannot be used refuses its own reading alone: the first 10 are shown, all are "
+      "counted,\n"
+      "and when everything else has been used and written the exit code is 2. A header that cannot be used "
+      "ends the\n"
+      "replay at once, also with 2. Rows may be out of order within the rig's horizon; older ones are "
+      "refused.");
   command->callback([options, &run] { run = [options] { return replay(*options); }; });
 }
 

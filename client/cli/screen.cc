@@ -66,8 +66,8 @@ ScreenSize terminal_size() {
 
 std::vector<std::string> Screen::draw(const Picture& picture, ScreenSize size) {
   std::vector<std::string> lines;
-  lines.push_back(time_text(picture.estimate.time_ns, TimeStyle::kRfc3339) + "   estimate " + picture.quality +
-                  (picture.started ? "" : "   no reading yet"));
+  lines.push_back(time_text(picture.estimate.time_ns, TimeStyle::kRfc3339) + "   estimate " +
+                  picture.quality + (picture.started ? "" : "   no reading yet"));
   lines.emplace_back();
   spans_.resize(picture.names.states.size());
   const std::size_t state_width = widest(picture.names.states);
@@ -96,8 +96,8 @@ std::string Screen::state_line(const Picture& picture, std::size_t state, std::s
   std::string bar(kBarWidth, '.');
   for (std::size_t i = place(low, span.lo, span.hi); i <= place(high, span.lo, span.hi); ++i) bar[i] = '=';
   bar[place(told.mean, span.lo, span.hi)] = '|';
-  const std::string number = timeline::rounded(told.mean, told.sd) + " ± " + timeline::rounded(told.sd, told.sd) +
-                             " " + picture.state_units[state];
+  const std::string number = timeline::rounded(told.mean, told.sd) + " ± " +
+                             timeline::rounded(told.sd, told.sd) + " " + picture.state_units[state];
   const double step = std::max((span.hi - span.lo) / 10.0, 0.0);
   return padded(picture.names.states[state], name_width) + "  " + padded(number, 24) + " [" + bar + "] " +
          timeline::rounded(span.lo, step) + " to " + timeline::rounded(span.hi, step) +
@@ -112,8 +112,8 @@ std::string Screen::channel_line(const Picture& picture, std::size_t channel, st
   const auto full = static_cast<std::size_t>(std::lround(trust * static_cast<double>(kTrustWidth)));
   const std::string bar = "[" + std::string(full, '#') + std::string(kTrustWidth - full, '.') + "]";
   std::string line = padded(picture.names.channels[channel], name_width) + "  trust " +
-                     padded(timeline::rounded(trust, 0.03), 4) + " " + bar + "  " + padded(age_text(told.age_s), 8) +
-                     picture.words[channel];
+                     padded(timeline::rounded(trust, 0.03), 4) + " " + bar + "  " +
+                     padded(age_text(told.age_s), 8) + picture.words[channel];
   line = cut(line, columns);
   if (!colour_) return line;
   // Where sound leads the line stands as it is; else it stands out.

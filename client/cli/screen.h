@@ -1,6 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
-// The picture that watch shows in a terminal: the estimate with error bars, and for each channel a bar of trust and
-// the leading explanation in words. Colour only repeats what bars and words say.
+// The picture that watch shows in a terminal: the estimate with error bars, and for each channel a bar of
+// trust and the leading explanation in words. Colour only repeats what bars and words say.
 #pragma once
 
 #include <string>
@@ -32,7 +32,8 @@ class Screen {
     bool any = false;
   };
   std::string state_line(const Picture& picture, std::size_t state, std::size_t name_width);
-  std::string channel_line(const Picture& picture, std::size_t channel, std::size_t name_width, std::size_t columns);
+  std::string channel_line(const Picture& picture, std::size_t channel, std::size_t name_width,
+                           std::size_t columns);
 
   bool colour_;
   std::vector<Span> spans_;

@@ -10,9 +10,10 @@ namespace steelyard::client {
 void add_time_option(CLI::App& command, TimeStyle& style) {
   static const std::map<std::string, TimeStyle> kStyles{{"seconds", TimeStyle::kSeconds},
                                                         {"rfc3339", TimeStyle::kRfc3339}};
-  command.add_option("--time", style, "How times are written: seconds (since 1970, the default) or rfc3339 (UTC)")
-      ->transform(CLI::Transformer(kStyles))
-      ->check(CLI::IsMember(kStyles))
+  command
+      .add_option("--time", style,
+                  "How times are written: seconds (since 1970, the default) or rfc3339 (UTC)")
+      ->transform(CLI::CheckedTransformer(kStyles))
       ->type_name("STYLE");
 }
 

@@ -21,12 +21,11 @@
 #include "cli/screen.h"
 #include "cli/signals.h"
 #include "lib/client.h"
+#include "lib/clock.h"
 #include "lib/log/stretches.h"
 
 namespace steelyard::client {
 namespace {
-
-using Clock = std::chrono::steady_clock;
 
 constexpr double kNsPerS = 1e9;
 constexpr double kScreenRateHz = 4.0;  // as fast as a person can read
@@ -37,7 +36,7 @@ struct Options {
   bool once = false;
   bool words = false;
   bool every_moment = false;
-  double rate_hz = 0.0;  // 0: the usual one
+  double rate_hz = 0.0;       // 0: the usual one
   double until_idle_s = 0.0;  // 0: no end
   TimeStyle time = TimeStyle::kSeconds;
 };
@@ -47,17 +46,17 @@ class Idle {
  public:
   explicit Idle(double after_s) : after_s_(after_s) {}
 
-  void reading_came() { newest_ = Clock::now().time_since_epoch().count(); }
+  void reading_came() { newest_ = steady_now().time_since_epoch().count(); }
   [[nodiscard]] bool over() const {
-    const Clock::rep newest = newest_;
+    const SteadyTime::rep newest = newest_;
     if (!(after_s_ > 0.0) || newest == 0) return false;
-    const Clock::duration since = Clock::now().time_since_epoch() - Clock::duration(newest);
+    const SteadyTime::duration since = steady_now().time_since_epoch() - SteadyTime::duration(newest);
     return std::chrono::duration<double>(since).count() > after_s_;
   }
 
  private:
   double after_s_;
-  std::atomic<Clock::rep> newest_ = 0;  // 0: none yet
+  std::atomic<SteadyTime::rep> newest_ = 0;  // 0: none yet
 };
 
 /// What is done with pictures.
@@ -97,7 +96,8 @@ class ShowRows : public Show {
 
 class ShowScreen : public Show {
  public:
-  ShowScreen(Output& out, bool once) : out_(out), once_(once), screen_(!once && std::getenv("NO_COLOR") == nullptr) {
+  ShowScreen(Output& out, bool once)
+      : out_(out), once_(once), screen_(!once && std::getenv("NO_COLOR") == nullptr) {
     if (!once_) out_.write("\x1b[?25l\x1b[2J");
   }
 
@@ -136,7 +136,10 @@ class ShowScreen : public Show {
 class ShowWords : public Show {
  public:
   ShowWords(Output& out, const Options& options, double response_s)
-      : out_(out), style_(options.time), once_(options.once), join_ns_(static_cast<engine::TimeNs>(response_s * kNsPerS)) {}
+      : out_(out),
+        style_(options.time),
+        once_(options.once),
+        join_ns_(static_cast<engine::TimeNs>(response_s * kNsPerS)) {}
 
   bool picture(const Picture& picture) override {
     if (once_) return every_channel(picture);
@@ -146,7 +149,8 @@ class ShowWords : public Show {
       stretches_.emplace(names_.channels.size(), join_ns_);
     }
     std::vector<ChannelView> views;
-    for (const engine::ChannelEstimate& channel : picture.estimate.channels) views.push_back(view_of(channel));
+    for (const engine::ChannelEstimate& channel : picture.estimate.channels)
+      views.push_back(view_of(channel));
     stretches_->add(
         picture.estimate.time_ns, views,
         [&picture](int channel) { return picture.words[static_cast<std::size_t>(channel)]; },
@@ -222,8 +226,8 @@ class Watching {
   grpc::Status watch(Show& show) {
     const v1::WatchRequest request = request_of(options_);
     while (true) {
-      grpc::Status status =
-          client_.watch(request, [this, &show](const v1::WatchResponse& update) { return take(update, show); }, stop_);
+      grpc::Status status = client_.watch(
+          request, [this, &show](const v1::WatchResponse& update) { return take(update, show); }, stop_);
       if (status.error_code() != grpc::StatusCode::UNAVAILABLE || stop_.stop_requested()) return status;
       complain("watch: connection lost (" + status.error_message() + "); trying again");
       status = client_.connect(stop_);
@@ -272,14 +276,17 @@ void add_watch(CLI::App& app, Run& run) {
   command->add_option("--from", options->from, "Address of the service, HOST:PORT")->required();
   command->add_option("--rig", options->rig, "Name of a rig that the service has")->required();
   command->add_flag("--once", options->once, "Show one picture and end");
-  command->add_flag("--words", options->words,
-                    "Tell each change of a channel in words and, at the end, the stretches in which it was not sound");
+  command->add_flag(
+      "--words", options->words,
+      "Tell each change of a channel in words and, at the end, the stretches in which it was not sound");
   command->add_flag("--every-moment", options->every_moment,
                     "Every distinct reading time, none left out; a slow reader then holds up the sources");
   command->add_option("--rate", options->rate_hz, "At most so many updates a second (10; in a terminal 4)")
       ->check(CLI::Range(0.001, 1000.0))
       ->excludes("--every-moment");
-  command->add_option("--until-idle", options->until_idle_s, "End when no new reading has come for so many seconds")
+  command
+      ->add_option("--until-idle", options->until_idle_s,
+                   "End when no new reading has come for so many seconds")
       ->check(CLI::Range(0.1, 1e9));
   add_time_option(*command, options->time);
   command->footer("Ends on Ctrl-C with exit 0. Set NO_COLOR for a screen without colour.");

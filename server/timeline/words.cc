@@ -28,13 +28,13 @@ std::string fixed(double value, int decimals) {
 
 std::string general(double value, int digits) {
   std::array<char, 64> buffer;
-  const auto [end, error] = std::to_chars(buffer.data(), buffer.data() + buffer.size(), value,
-                                          std::chars_format::general, digits);
+  const auto [end, error] =
+      std::to_chars(buffer.data(), buffer.data() + buffer.size(), value, std::chars_format::general, digits);
   return error == std::errc() ? std::string(buffer.data(), end) : "?";
 }
 
-/// Power of ten of the last digit worth writing: the sd's first one, or its second where the first is 1 (an sd of
-/// 0.1 may be 0.14, which is too coarse a step).
+/// Power of ten of the last digit worth writing: the sd's first one, or its second where the first is 1 (an
+/// sd of 0.1 may be 0.14, which is too coarse a step).
 int last_digit_power(double sd) {
   const int power = static_cast<int>(std::floor(std::log10(sd)));
   const double leading = sd / std::pow(10.0, power);

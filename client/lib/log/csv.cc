@@ -82,8 +82,8 @@ CsvReader::Got CsvReader::read_record() {
   return Got::kRecord;
 }
 
-/// A quoted cell may hold line breaks. Its lines (at most kMaxRecordBytes) are remembered: if the quote turns out
-/// not to be closed, they are read again as rows of their own.
+/// A quoted cell may hold line breaks. Its lines (at most kMaxRecordBytes) are remembered: if the quote turns
+/// out not to be closed, they are read again as rows of their own.
 CsvReader::Got CsvReader::read_on_in_quotes() {
   std::deque<Line> more;
   bool sound = true;

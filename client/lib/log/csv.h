@@ -4,9 +4,9 @@
 //   CsvReader csv(stream);
 //   for (auto got = csv.next(); got != CsvReader::Got::kEnd; got = csv.next()) { … }
 //
-// Lines end in LF or CRLF; a byte-order mark at the start is skipped; empty lines are skipped. Memory is bounded
-// by kMaxRecordBytes. A record that is wrong is reported and reading goes on with the line after the one on which
-// it began: a quote that is never closed costs one line, not the rest of the file.
+// Lines end in LF or CRLF; a byte-order mark at the start is skipped; empty lines are skipped. Memory is
+// bounded by kMaxRecordBytes. A record that is wrong is reported and reading goes on with the line after the
+// one on which it began: a quote that is never closed costs one line, not the rest of the file.
 #pragma once
 
 #include <cstdint>

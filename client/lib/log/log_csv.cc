@@ -15,6 +15,8 @@ namespace {
 using engine::Quality;
 using Cell = CsvReader::Cell;
 
+// Half of what 64 bits can tell, so that the difference of any two times of a log can be told, too.
+constexpr engine::TimeNs kFarthestNs = engine::TimeNs{1} << 62;
 constexpr std::string_view kQualitySuffix = ".quality";
 constexpr std::array<std::pair<std::string_view, Quality>, 5> kQualities{{
     {"good", Quality::kGood},
@@ -124,7 +126,8 @@ bool LogReader::open_wide(const std::vector<Cell>& header) {
 bool LogReader::add_wide_column(const Cell& cell, std::size_t at) {
   const std::optional<rig::Signal> signal = find_(cell.text);
   if (!signal) {
-    return problem(cell, "header", "has the column " + shown(cell.text) + "; the rig has no such channel or input");
+    return problem(cell, "header",
+                   "has the column " + shown(cell.text) + "; the rig has no such channel or input");
   }
   wide_.push_back({std::string(cell.text), *signal, at, std::nullopt});
   return true;
@@ -164,8 +167,9 @@ bool LogReader::next(LogRow& row) {
 void LogReader::read_row(LogRow& row) {
   const std::size_t cells = csv_.cells().size();
   if (cells != width_) {
-    problem(row.line, 1, "row", "has " + std::to_string(cells) + (cells == 1 ? " cell" : " cells") +
-                                    "; must have " + std::to_string(width_) + " like the header");
+    problem(row.line, 1, "row",
+            "has " + std::to_string(cells) + (cells == 1 ? " cell" : " cells") + "; must have " +
+                std::to_string(width_) + " like the header");
     return;
   }
   row.time_column = csv_.cells()[time_].column;
@@ -181,12 +185,12 @@ void LogReader::read_row(LogRow& row) {
 std::optional<engine::TimeNs> LogReader::read_time() {
   const Cell& cell = csv_.cells()[time_];
   const std::optional<engine::TimeNs> time_ns = parse_time(cell.text);
-  if (!time_ns) {
-    problem(cell, "time", "is " + shown(cell.text) +
-                              "; must be RFC 3339 with an offset, or decimal seconds since 1970, between the "
-                              "years 1678 and 2262");
-  }
-  return time_ns;
+  if (time_ns && *time_ns > -kFarthestNs && *time_ns < kFarthestNs) return time_ns;
+  problem(cell, "time",
+          "is " + shown(cell.text) +
+              "; must be RFC 3339 with an offset, or decimal seconds since 1970, between the years "
+              "1824 and 2115");
+  return std::nullopt;
 }
 
 void LogReader::read_long(LogRow& row, engine::TimeNs time_ns) {

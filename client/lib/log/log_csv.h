@@ -4,8 +4,8 @@
 //   long:  time,channel,value[,quality]
 //   wide:  time,<name>,<name>.quality,<name>…     an empty cell is no reading
 //
-// A wrong header is fatal. A wrong cell refuses its own reading, a wrong time or a wrong number of cells the row;
-// each is told to `on_problem` and reading goes on. Nothing in the file can throw or abort.
+// A wrong header is fatal. A wrong cell refuses its own reading, a wrong time or a wrong number of cells the
+// row; each is told to `on_problem` and reading goes on. Nothing in the file can throw or abort.
 //
 //   LogReader log(stream, "log.csv", find, on_problem);
 //   if (!log.open()) return 2;                       // on_problem has been told why
@@ -36,7 +36,8 @@ struct LogReading {
 
 /// The readings of one row (none if all its cells are empty or refused).
 struct LogRow {
-  std::uint64_t number = 0;  ///< of the row, from 1, not counting the header; wrong rows count, empty lines do not
+  std::uint64_t number =
+      0;  ///< of the row, from 1, not counting the header; wrong rows count, empty lines do not
   int line = 0;
   int time_column = 0;  ///< where its time stands, for messages
   std::vector<LogReading> readings;

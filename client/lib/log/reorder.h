@@ -1,6 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
-// Puts the readings of a log in the order of time while it streams by: what may still be overtaken by an earlier
-// reading waits, at most one horizon of the log (and one of the rig's longest delay) at a time.
+// Puts the readings of a log in the order of time while it streams by: what may still be overtaken by an
+// earlier reading waits, at most one horizon of the log (and one of the rig's longest delay) at a time.
 #pragma once
 
 #include <cstddef>
@@ -25,8 +25,9 @@ class Reorder {
   /// How far a reading lies behind the newest one so far, for messages.
   [[nodiscard]] double behind_s(const LogReading& reading) const;
 
-  /// Appends to `out` the readings that nothing can overtake any more, in order of time less delay, and in the
-  /// order of their arrival where that is equal. All readings of one time come out together. Sequences rise.
+  /// Appends to `out` the readings that nothing can overtake any more, in order of time less delay, and in
+  /// the order of their arrival where that is equal. All readings of one time come out together. Sequences
+  /// rise.
   void release(std::vector<timeline::Reading>& out);
   /// The same for all that is left.
   void release_rest(std::vector<timeline::Reading>& out);

@@ -26,6 +26,10 @@ bool kind_has_size(int kind) {
          condition == engine::Condition::kWandering;
 }
 
+/// How long a change must last before it is told, in times of `join`. Between the kinds that differ in the
+/// speed of an offset alone the lead wavers while the evidence gathers: that is no news.
+TimeNs patience(int from, int to) { return kind_has_size(from) && kind_has_size(to) ? 5 : 1; }
+
 double kind_probability(const ChannelView& view, int kind) {
   return kind == kSilentKind ? view.silent : view.probability[static_cast<std::size_t>(kind)];
 }
@@ -75,7 +79,7 @@ void Stretches::tell(TimeNs time_ns, int channel, int kind, const Words& words, 
     one.waiting_since_ns = time_ns;
   }
   const bool at_once = one.told == kSoundKind;
-  if (!at_once && gap(one.waiting_since_ns, time_ns) < join_ns_) return;
+  if (!at_once && gap(one.waiting_since_ns, time_ns) / patience(one.told, kind) < join_ns_) return;
   one.told = kind;
   if (on_change) on_change({one.waiting_since_ns, channel, kind, words ? words(channel) : std::string()});
 }
@@ -103,15 +107,16 @@ void Stretches::follow(TimeNs time_ns, int channel, const ChannelView& view) {
 }
 
 void Stretches::see(Channel& one, int kind, const ChannelView& view, double step_s) {
-  // Among times at which the kind is nearly as probable as ever the largest offset is told: a slow creep is named
-  // by where it came to, not by where it was first certain.
+  // Among times at which the kind is nearly as probable as ever the largest offset is told: a slow creep is
+  // named by where it came to, not by where it was first certain.
   constexpr double kNearly = 0.9;
   constexpr double kMoment_s = 1e-9;  // so that a stretch of a single estimate has a kind
   const double probability = kind_probability(view, kind);
   KindSeen& seen = one.kinds[static_cast<std::size_t>(kind)];
   seen.weight_s += probability * (step_s + kMoment_s);
   const bool surer = probability * kNearly > seen.probability;
-  const bool larger = probability >= seen.probability * kNearly && std::abs(view.offset) > std::abs(seen.size);
+  const bool larger =
+      probability >= seen.probability * kNearly && std::abs(view.offset) > std::abs(seen.size);
   if (surer || larger) {
     seen.size = view.offset;
     seen.size_sd = view.offset_sd;
@@ -122,9 +127,9 @@ void Stretches::see(Channel& one, int kind, const ChannelView& view, double step
 
 void Stretches::close(int channel, bool open) {
   Channel& one = channels_[static_cast<std::size_t>(channel)];
-  const auto most = std::max_element(one.kinds.begin(), one.kinds.end(), [](const KindSeen& a, const KindSeen& b) {
-    return a.weight_s < b.weight_s;
-  });
+  const auto most =
+      std::max_element(one.kinds.begin(), one.kinds.end(),
+                       [](const KindSeen& a, const KindSeen& b) { return a.weight_s < b.weight_s; });
   const int kind = static_cast<int>(most - one.kinds.begin());
   if (done_.size() < kMost) {
     done_.push_back({channel, one.from_ns, one.to_ns, open, kind, most->probability, one.unsound,

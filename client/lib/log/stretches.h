@@ -1,14 +1,15 @@
 // SPDX-License-Identifier: Apache-2.0
-// What happened to the channels, told from a sequence of estimates: a line each time the leading condition of a
-// channel changes, and at the end the stretches in which a channel was not sound. Display only: the most probable
-// condition is named, and nothing is decided by it.
+// What happened to the channels, told from a sequence of estimates: a line each time the leading condition of
+// a channel changes, and at the end the stretches in which a channel was not sound. Display only: the most
+// probable condition is named, and nothing is decided by it.
 //
 //   Stretches stretches(names, units, response_ns);
 //   for (each moment) stretches.add(time_ns, views, words, on_change);
 //   write(stretches.finish());
 //
-// Chatter is joined: what turns sound for less than `join` counts as one stretch. That a channel is no longer sound
-// is told at once; a change to another condition, or back to sound, when it has lasted for `join`.
+// Chatter is joined: what turns sound for less than `join` counts as one stretch. That a channel is no longer
+// sound is told at once; a change to another condition, or back to sound, when it has lasted for `join` (for
+// five of it between creeping, offset and wandering).
 #pragma once
 
 #include <array>
@@ -114,7 +115,8 @@ class Stretches {
 
 /// The summary as a table for people, one line each; `time` writes a time.
 [[nodiscard]] std::string stretches_text(const std::vector<Stretch>& stretches, std::uint64_t left_out,
-                                         std::span<const std::string> names, std::span<const std::string> units,
+                                         std::span<const std::string> names,
+                                         std::span<const std::string> units,
                                          const std::function<std::string(engine::TimeNs)>& time);
 
 }  // namespace steelyard::client
