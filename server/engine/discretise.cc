@@ -8,11 +8,17 @@
 namespace steelyard::engine {
 namespace {
 
-constexpr int kTerms = 20;  // (2·½)^k/(k+1)! < 1e-18 at k = 20
+// Terms after which the rest is below the rounding of the sum: the k-th is at most (2x)^k/(k+1)!, x = ‖M‖·h ≤
+// ½.
+int terms_needed(double x) {
+  int k = 0;
+  for (double bound = 1.0; bound > 1e-18; ++k) bound *= 2.0 * x / (k + 2);
+  return k;
+}
 
 // One step of length h with ‖M‖·h ≤ ½. Q solves Q' = MQ + QMᵀ + D, so its Taylor terms are
 // h^(k+1)/(k+1)! · R_k with R_0 = D, R_(k+1) = M R_k + R_k Mᵀ.
-void short_step(const LinearSystem& s, double h, Transition& out) {
+void short_step(const LinearSystem& s, double h, int terms, Transition& out) {
   const auto n = s.rate.rows();
   CoreMatrix power = CoreMatrix::Identity(n, n);
   CoreVector drive = s.drive;
@@ -22,7 +28,7 @@ void short_step(const LinearSystem& s, double h, Transition& out) {
   out.shift = drive * h;
   out.noise = lyapunov * h;
   double factor = 1.0;
-  for (int k = 1; k <= kTerms; ++k) {
+  for (int k = 1; k <= terms; ++k) {
     factor *= h / k;
     product.noalias() = s.rate.lazyProduct(power);
     power = product;
@@ -54,7 +60,7 @@ void discretise(const LinearSystem& system, double dt_s, Transition& out) {
     h *= 0.5;
     ++doublings;
   }
-  short_step(system, h, out);
+  short_step(system, h, terms_needed(norm * h), out);
   for (int i = 0; i < doublings; ++i) twice(out);
 }
 

@@ -149,8 +149,7 @@ void Posterior::split_modes(double dt_s) {
   }
   next.clear();
   for (int begin = 0; begin < now.size();) {
-    int end = begin + 1;
-    while (end < now.size() && now[end].conditions == now[begin].conditions) ++end;
+    const int end = now.group_end(begin);
     for (int to = 0; to < kModes; ++to) {
       if (!mode_on[static_cast<std::size_t>(to)]) continue;
       Hypothesis* target = nullptr;
@@ -180,7 +179,8 @@ void Posterior::predict_next(TimeNs t) {
   for (TimeNs from = predicted_to; from < t;) {
     const TimeNs to = next_expiry(from, t);
     motion.prepare(from, to, unknown_inputs(from));
-    for (int i = 0; i < next.size(); ++i) motion.predict(next[i], walk_density);
+    for (int begin = 0; begin < next.size(); begin = next.group_end(begin))
+      motion.predict(next.slice(begin, next.group_end(begin)), walk_density);
     from = to;
   }
 }

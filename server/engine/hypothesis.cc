@@ -91,6 +91,12 @@ Hypothesis& Pool::append_copy(const Hypothesis& from) {
   return to;
 }
 
+int Pool::group_end(int begin) const {
+  int end = begin + 1;
+  while (end < size_ && (*this)[end].conditions == (*this)[begin].conditions) ++end;
+  return end;
+}
+
 void Pool::swap_items(int i, int k) {
   std::swap(items_[static_cast<std::size_t>(i)], items_[static_cast<std::size_t>(k)]);
   std::swap(block_of_[static_cast<std::size_t>(i)], block_of_[static_cast<std::size_t>(k)]);

@@ -8,6 +8,7 @@
 
 #include <array>
 #include <cstdint>
+#include <span>
 #include <vector>
 
 #include "engine/gamma.h"
@@ -38,7 +39,10 @@ class Conditions {
     const unsigned shift = 4 * (c % 16);
     word_[c / 16] = (word_[c / 16] & ~(std::uint64_t{15} << shift)) | (std::uint64_t(condition) << shift);
   }
-  auto operator<=>(const Conditions&) const = default;
+  bool operator==(const Conditions& o) const { return word_[0] == o.word_[0] && word_[1] == o.word_[1]; }
+  bool operator<(const Conditions& o) const {
+    return word_[1] != o.word_[1] ? word_[1] < o.word_[1] : word_[0] < o.word_[0];
+  }
 
  private:
   std::array<std::uint64_t, kMaxChannels / 16> word_{};
@@ -82,12 +86,17 @@ class Pool {
   [[nodiscard]] int capacity() const { return static_cast<int>(items_.size()); }
   [[nodiscard]] Hypothesis& operator[](int i) { return items_[static_cast<std::size_t>(i)]; }
   [[nodiscard]] const Hypothesis& operator[](int i) const { return items_[static_cast<std::size_t>(i)]; }
+  [[nodiscard]] std::span<Hypothesis> slice(int begin, int end) {
+    return {items_.data() + begin, static_cast<std::size_t>(end - begin)};
+  }
   /// Appends a hypothesis with unspecified contents; size() < capacity().
   Hypothesis& append();
   Hypothesis& append_copy(const Hypothesis& from);
   void clear() { size_ = 0; }
   void shrink(int size) { size_ = size; }
   void swap_items(int i, int k);
+  /// End of the run of equal conditions that begins at `begin`; the pool must be in the order of keys.
+  [[nodiscard]] int group_end(int begin) const;
   /// Copies a hypothesis of the same layout into one of this pool.
   void assign(Hypothesis& to, const Hypothesis& from) const;
 

@@ -14,7 +14,7 @@ namespace {
 
 constexpr double kCoarse = 0.3;  // resolution over predicted sd from which the bin's probability counts
 constexpr int kFixedPointSteps = 8;
-constexpr double kFixedPointTolerance = 1e-3;
+constexpr double kFixedPointTolerance = 1e-2;
 
 }  // namespace
 

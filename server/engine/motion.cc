@@ -1,8 +1,10 @@
 // SPDX-License-Identifier: Apache-2.0
-// Prediction. An affine law moves by its exact discretisation, cached by gap. Any other law moves by
-// statistical linear regression over sigma points (cubature points: Arasaratnam & Haykin 2009; regression
-// view: Lefebvre, Bruyninckx & De Schutter 2002), process noise by discretising the Jacobian at the mean.
-// Very long gaps use local linearisation steps (Ozaki 1992), whose number is bounded.
+// Prediction. An affine law moves by its exact discretisation, cached by gap. Any other law moves in steps of
+// at most a twentieth of the response time; in each, its rates are replaced by their statistical linear
+// regression over sigma points (cubature points: Arasaratnam & Haykin 2009; regression: Lefebvre, Bruyninckx
+// & De Schutter 2002) and the resulting linear system is discretised exactly (local linearisation: Ozaki
+// 1992), which stays stable however stiff the law or long the step. The number of steps is bounded: very long
+// gaps take longer steps.
 #include "engine/motion.h"
 
 #include <algorithm>
@@ -15,7 +17,6 @@ namespace {
 
 constexpr double kStepsPerResponse = 20.0;
 constexpr int kMaxSteps = 200;
-constexpr double kSigmaPointResponses = 10.0;  // longer gaps: sigma points buy nothing, stiffness costs
 
 double seconds(TimeNs ns) { return static_cast<double>(ns) * 1e-9; }
 
@@ -59,9 +60,21 @@ Motion::Motion(const Model& model, const Layout& layout)
 
 void Motion::prepare(TimeNs from_ns, TimeNs to_ns, unsigned unknown_inputs) {
   from_ns_ = from_ns;
-  gap_ns_ = to_ns - from_ns;
-  gap_s_ = seconds(gap_ns_);
+  const TimeNs length_ns = to_ns - from_ns;
+  gap_s_ = seconds(length_ns);
   unknown_ = unknown_inputs;
+  if (!affine_) return;
+  for (const auto& gap : cache_) {
+    if (gap.length_ns != length_ns || gap.unknown != unknown_) continue;
+    affine_gap_ = &gap;
+    return;
+  }
+  Gap& gap = cache_[static_cast<std::size_t>(next_in_cache_)];
+  next_in_cache_ = (next_in_cache_ + 1) % static_cast<int>(cache_.size());
+  fill(gap, rate_, drive_, gap_s_);
+  gap.length_ns = length_ns;
+  gap.unknown = unknown_;
+  affine_gap_ = &gap;
 }
 
 // Discretises with the unknown inputs' pull to the middle of their range added.
@@ -87,17 +100,6 @@ void Motion::fill(Gap& gap, const CoreMatrix& rate, const CoreVector& drive, dou
   gap.input_noise = moved.noise;
 }
 
-const Motion::Gap& Motion::affine_gap() {
-  for (const auto& gap : cache_)
-    if (gap.length_ns == gap_ns_ && gap.unknown == unknown_) return gap;
-  Gap& gap = cache_[static_cast<std::size_t>(next_in_cache_)];
-  next_in_cache_ = (next_in_cache_ + 1) % static_cast<int>(cache_.size());
-  fill(gap, rate_, drive_, gap_s_);
-  gap.length_ns = gap_ns_;
-  gap.unknown = unknown_;
-  return gap;
-}
-
 void Motion::rates(const CoreVector& v, double time_s, CoreVector& out) const {
   out.resize(layout_.core);
   const auto n = static_cast<std::size_t>(layout_.states);
@@ -106,51 +108,12 @@ void Motion::rates(const CoreVector& v, double time_s, CoreVector& out) const {
     out(static_cast<Eigen::Index>(i)) =
         law_value(model_.states[i].rate, v.data(), n, v.data() + n, k, time_s);
   for (std::size_t i = 0; i < k; ++i) {
-    const auto& input = model_.inputs[i];
-    const auto at = static_cast<Eigen::Index>(n + i);
-    out(at) = unknown_ >> i & 1U ? (0.5 * (input.lo + input.hi) - v(at)) / model_.response_s : 0.0;
+    out(static_cast<Eigen::Index>(n + i)) = 0.0;  // held; fill() adds the pull of unknown ones
   }
 }
 
-void Motion::jacobian(const CoreVector& v, double time_s, CoreMatrix& out) const {
-  const int n = layout_.core;
-  out.resize(n, n);
-  CoreVector above(n);
-  CoreVector below(n);
-  for (int k = 0; k < n; ++k) {
-    const double step = 1e-6 * std::max(std::fabs(v(k)), 1.0);
-    CoreVector moved = v;
-    moved(k) = v(k) + step;
-    rates(moved, time_s, above);
-    moved(k) = v(k) - step;
-    rates(moved, time_s, below);
-    out.col(k) = (above - below) / (2.0 * step);
-  }
-}
-
-// Classical Runge–Kutta (Kutta 1901) over the gap.
-void Motion::flow(CoreVector& v) const {
-  const double wanted = std::ceil(gap_s_ * kStepsPerResponse / model_.response_s);
-  const int steps = std::clamp(static_cast<int>(std::min(wanted, 1e6)), 1, kMaxSteps);
-  const double h = gap_s_ / steps;
-  CoreVector k1;
-  CoreVector k2;
-  CoreVector k3;
-  CoreVector k4;
-  for (int i = 0; i < steps; ++i) {
-    const double t = seconds(from_ns_) + h * i;
-    rates(v, t, k1);
-    rates(v + 0.5 * h * k1, t + 0.5 * h, k2);
-    rates(v + 0.5 * h * k2, t + 0.5 * h, k3);
-    rates(v + h * k3, t + h, k4);
-    v += (h / 6.0) * (k1 + 2.0 * k2 + 2.0 * k3 + k4);
-  }
-}
-
-// Fills own_ so that apply() moves the hypothesis: transition by regression over sigma points, noise by the
-// Jacobian's discretisation plus what the regression leaves unexplained, shift so that the mean comes out
-// right.
-void Motion::nonlinear_gap(const Hypothesis& h, double mode_factor) {
+// Fills local_ with one step of the law as the hypothesis's Gaussian sees it.
+void Motion::linearise(const Hypothesis& h, double time_s, double dt_s) {
   const int n = layout_.core;
   CoreVector mean(n);
   CoreMatrix cov(n, n);
@@ -158,82 +121,54 @@ void Motion::nonlinear_gap(const Hypothesis& h, double mode_factor) {
     mean(i) = h.mean[i];
     for (int k = 0; k < n; ++k) cov(i, k) = h.p(i, k);
   }
-  if (gap_s_ > kSigmaPointResponses * model_.response_s) return long_gap(mean, mode_factor);
   CoreMatrix root;
   cholesky(cov, root);
-  CoreMatrix up(n, n);
-  CoreMatrix down(n, n);
-  moved_mean_.setZero(n);
+  CoreMatrix slope(n, n);
+  CoreVector drive = CoreVector::Zero(n);
+  CoreVector up(n);
+  CoreVector down(n);
   const double reach = std::sqrt(static_cast<double>(n));
   for (int k = 0; k < n; ++k) {
-    CoreVector a = mean + reach * root.col(k);
-    CoreVector b = mean - reach * root.col(k);
-    flow(a);
-    flow(b);
-    up.col(k) = a;
-    down.col(k) = b;
-    moved_mean_ += (a + b) / (2.0 * n);
+    rates(mean + reach * root.col(k), time_s, up);
+    rates(mean - reach * root.col(k), time_s, down);
+    slope.col(k) = (up - down) / (2.0 * reach);
+    drive += (up + down) / (2.0 * n);
   }
-  CoreMatrix slope = (up - down) / (2.0 * reach);
-  CoreMatrix rate;
-  jacobian(mean, seconds(from_ns_), rate);
-  fill(own_, rate, CoreVector::Zero(n), gap_s_);
-  // Unexplained by the regression: the spread of the pairs' midpoints, which is the even part of the law.
-  CoreMatrix bend = 0.5 * (up + down);
-  bend.colwise() -= moved_mean_;
-  CoreMatrix residual = bend.lazyProduct(bend.transpose()) / static_cast<double>(n);
-  own_.input_noise = own_.has_input_noise ? CoreMatrix(own_.input_noise + residual) : residual;
-  own_.has_input_noise = true;
   for (int i = 0; i < n; ++i) divide_by_lower(slope.row(i), root);
-  own_.move.transition = slope;
-  own_.move.shift = moved_mean_ - CoreVector(slope.lazyProduct(mean));
+  drive -= CoreVector(slope.lazyProduct(mean));
+  fill(local_, slope, drive, dt_s);
 }
 
-void Motion::long_gap(const CoreVector& mean, double mode_factor) {
-  const int n = layout_.core;
-  const double h = gap_s_ / kMaxSteps;
-  CoreVector v = mean;
-  CoreMatrix f = CoreMatrix::Identity(n, n);
-  CoreMatrix q = CoreMatrix::Zero(n, n);
-  CoreMatrix rate;
-  CoreVector drive(n);
-  for (int i = 0; i < kMaxSteps; ++i) {
-    const double t = seconds(from_ns_) + h * i;
-    jacobian(v, t, rate);
-    rates(v, t, drive);
-    drive -= CoreVector(rate.lazyProduct(v));
-    fill(own_, rate, drive, h);
-    const CoreMatrix& step = own_.move.transition;
-    v = CoreVector(step.lazyProduct(v)) + own_.move.shift;
-    f = CoreMatrix(step.lazyProduct(f));
-    CoreMatrix sq = step.lazyProduct(q);
-    q = CoreMatrix(sq.lazyProduct(step.transpose())) + mode_factor * own_.move.noise;
-    if (own_.has_input_noise) q += own_.input_noise;
-  }
-  own_.move.transition = f;
-  own_.move.shift = v - CoreVector(f.lazyProduct(mean));
-  own_.move.noise.setZero(n, n);
-  own_.input_noise = q;
-  own_.has_input_noise = true;
-}
-
-void Motion::predict(Hypothesis& h, const WalkDensity& walk_density) {
-  const double factor = mode_factor_[static_cast<std::size_t>(h.mode)];
+void Motion::predict(std::span<Hypothesis> group, const WalkDensity& walk_density) {
   if (affine_) {
-    apply(h, affine_gap(), factor);
+    for (Hypothesis& h : group) apply(h, *affine_gap_);
   } else {
-    nonlinear_gap(h, factor);
-    apply(h, own_, factor);
+    const double wanted = std::ceil(gap_s_ * kStepsPerResponse / model_.response_s);
+    const int steps = static_cast<int>(std::clamp(wanted, 1.0, static_cast<double>(kMaxSteps)));
+    const double dt_s = gap_s_ / steps;
+    // One regression, about the heaviest, serves all modes: they differ little in where they believe the
+    // machine.
+    const auto heaviest = std::max_element(
+        group.begin(), group.end(),
+        [](const Hypothesis& a, const Hypothesis& b) { return a.log_weight < b.log_weight; });
+    for (int i = 0; i < steps; ++i) {
+      linearise(*heaviest, seconds(from_ns_) + dt_s * i, dt_s);
+      for (Hypothesis& h : group) apply(h, local_);
+    }
   }
+  for (Hypothesis& h : group) walk(h, walk_density);
+}
+
+void Motion::walk(Hypothesis& h, const WalkDensity& walk_density) const {
   for (int j = 0; j < layout_.channels; ++j) {
-    const int at = h.own_at[static_cast<std::size_t>(j)];
-    if (at >= 0)
-      h.p(at, at) +=
-          walk_density[static_cast<std::size_t>(h.conditions.of(j))][static_cast<std::size_t>(j)] * gap_s_;
+    const auto u = static_cast<std::size_t>(j);
+    const int at = h.own_at[u];
+    if (at >= 0) h.p(at, at) += walk_density[static_cast<std::size_t>(h.conditions.of(j))][u] * gap_s_;
   }
 }
 
-void Motion::apply(Hypothesis& h, const Gap& gap, double mode_factor) {
+void Motion::apply(Hypothesis& h, const Gap& gap) {
+  const double mode_factor = mode_factor_[static_cast<std::size_t>(h.mode)];
   const int n = layout_.core;
   const int d = h.dim;
   const CoreMatrix& f = gap.move.transition;

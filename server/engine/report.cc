@@ -14,6 +14,8 @@ constexpr double kMissedDespiteWell = 0.1;  // P(a reading is lost on the way th
 constexpr double kNegligible = 1e-9;        // weight under which a hypothesis does not move an interval
 constexpr std::size_t kExplanations = 3;
 
+using Policy = boost::math::policies::policy<boost::math::policies::promote_double<false>>;
+
 double seconds(TimeNs ns) { return static_cast<double>(ns) * 1e-9; }
 
 // P(x ≤ value) under the mixture's marginal of z's element `at`.
@@ -153,9 +155,9 @@ void report_noise(const Gamma& g, const Options& options, double spec_sd, Detail
   out.noise_sd90 = {out.noise_sd, out.noise_sd};
   if (detail == Detail::kBrief || !options.learn_precision) return;
   // Quantiles of the precision, cut off at the datasheet's: noise falls as precision rises.
-  const double mass = options.cap_precision ? boost::math::gamma_p(g.a, g.b) : 1.0;
+  const double mass = options.cap_precision ? boost::math::gamma_p(g.a, g.b, Policy()) : 1.0;
   const auto quantile = [&](double p) {
-    const double x = boost::math::gamma_p_inv(g.a, std::clamp(p * mass, 1e-300, 1.0 - 1e-16)) / g.b;
+    const double x = boost::math::gamma_p_inv(g.a, std::clamp(p * mass, 1e-300, 1.0 - 1e-16), Policy()) / g.b;
     return options.cap_precision ? std::min(x, 1.0) : x;
   };
   out.noise_sd90 = {spec_sd / std::sqrt(quantile(0.95)), spec_sd / std::sqrt(quantile(0.05))};
