@@ -233,8 +233,7 @@ void check_member(const Item& item, std::span<const std::string_view> channels, 
   const std::string& name = item.node->text;
   if (!item.node->is_scalar()) return report_rule(item, "the name of a channel", problems);
   if (std::find(channels.begin(), channels.end(), name) != channels.end()) return;
-  problems.add(item.place(), item.path,
-               "is " + described(*item.node) + "; which is not a channel" + did_you_mean(name, channels));
+  problems.add(item.place(), item.path, shown(name) + " is not a channel" + did_you_mean(name, channels));
 }
 
 void check_members(const Item& item, std::span<const std::string_view> channels, Problems& problems) {
@@ -246,7 +245,7 @@ void check_members(const Item& item, std::span<const std::string_view> channels,
     if (problems.full()) return;
     check_member({&member, item.path}, channels, problems);
     const bool repeated = std::find(seen.begin(), seen.end(), member.text) != seen.end();
-    if (repeated) problems.add(member.at, item.path, "is " + described(member) + ", which is there already");
+    if (repeated) problems.add(member.at, item.path, shown(member.text) + " is listed twice");
     if (!repeated && seen.size() < channels.size()) seen.push_back(member.text);
   }
 }

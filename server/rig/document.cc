@@ -7,6 +7,7 @@
 #include <yaml-cpp/exceptions.h>
 #include <yaml-cpp/parser.h>
 
+#include <algorithm>
 #include <array>
 #include <charconv>
 #include <exception>
@@ -18,8 +19,6 @@
 
 namespace steelyard::rig {
 namespace {
-
-constexpr std::string_view kByteOrderMark = "\xEF\xBB\xBF";
 
 Place place_of(const YAML::Mark& mark) { return {mark.line + 1, mark.column + 1}; }
 
@@ -163,6 +162,14 @@ bool is_text(std::string_view text, Problems& problems) {
   return true;
 }
 
+// yaml-cpp stumbles over what a tab did to the indentation without saying so.
+std::string tab_hint(std::string_view text, int lines_before) {
+  for (int i = 0; i < lines_before; ++i) text.remove_prefix(std::min(text.find('\n'), text.size() - 1) + 1);
+  const std::string_view indentation = text.substr(0, text.find_first_not_of(" \t"));
+  const bool has_tab = indentation.find('\t') != std::string_view::npos;
+  return has_tab ? "; the line is indented with a tab, use spaces" : "";
+}
+
 // A second call shows whether more follows. Never a third: yaml-cpp 0.7 finds documents without end in "[],".
 std::optional<Node> build(std::string_view text, Problems& problems) {
   Builder builder(problems);
@@ -173,7 +180,8 @@ std::optional<Node> build(std::string_view text, Problems& problems) {
     return builder.take();
   } catch (const Stop&) {
   } catch (const YAML::Exception& error) {
-    problems.add(place_of(error.mark), "", "is not valid YAML: " + error.msg);
+    problems.add(place_of(error.mark), "",
+                 "is not valid YAML: " + error.msg + tab_hint(text, error.mark.line));
   } catch (const std::exception& error) {
     problems.add({1, 1}, "", std::string("is not valid YAML: ") + error.what());
   }
@@ -207,8 +215,7 @@ const Node* Node::find(std::string_view wanted) const {
 
 std::optional<Node> parse_document(std::string_view text, Problems& problems) {
   if (!is_text(text, problems)) return std::nullopt;
-  const bool marked = text.starts_with(kByteOrderMark);
-  std::optional<Node> top = build(marked ? text.substr(kByteOrderMark.size()) : text, problems);
+  std::optional<Node> top = build(text, problems);
   if (!top) return std::nullopt;
   if (top->kind == Node::Kind::kEmpty) {
     problems.add({1, 1}, "", "is empty; a description has at least rig, response, states and channels");
@@ -222,8 +229,12 @@ std::optional<Node> parse_document(std::string_view text, Problems& problems) {
   return top;
 }
 
+std::string_view without_byte_order_mark(std::string_view text) {
+  constexpr std::string_view kMark = "\xEF\xBB\xBF";
+  return text.starts_with(kMark) ? text.substr(kMark.size()) : text;
+}
+
 bool is_json(std::string_view text) {
-  if (text.starts_with(kByteOrderMark)) text.remove_prefix(kByteOrderMark.size());
   const std::size_t first = text.find_first_not_of(" \t\r\n");
   return first != std::string_view::npos && text[first] == '{';
 }

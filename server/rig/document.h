@@ -33,9 +33,13 @@ struct Node {
   [[nodiscard]] const Node* find(std::string_view wanted) const;
 };
 
-/// The tree, whose top is a map, or nullopt with the reasons added to `problems`. Never throws for anything
-/// in `text`; time and memory are bounded by kMaxTextBytes, recursion by kMaxDepth.
+/// The tree of a text without byte order mark, whose top is a map, or nullopt with the reasons added to
+/// `problems`. Never throws for anything in `text`; time and memory are bounded by kMaxTextBytes, recursion
+/// by kMaxDepth.
 [[nodiscard]] std::optional<Node> parse_document(std::string_view text, Problems& problems);
+
+/// Some editors begin a file with one; positions count from behind it.
+[[nodiscard]] std::string_view without_byte_order_mark(std::string_view text);
 
 /// Whether the text is a JSON object, as a message is printed: maps of a message have no order.
 [[nodiscard]] bool is_json(std::string_view text);

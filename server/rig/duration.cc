@@ -41,6 +41,7 @@ std::optional<double> parse_duration_s(std::string_view text) {
 
 std::string duration_text(double seconds) {
   std::string best = with_unit(seconds, "s");
+  if (seconds == 0.0) return best;
   const auto consider = [&](const std::string& text) {
     const bool shorter = text.size() < best.size();
     const bool whole = text.size() == best.size() && text.find('.') == std::string::npos;

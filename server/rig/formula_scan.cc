@@ -55,10 +55,7 @@ class Checker {
  public:
   Checker(const std::vector<std::string_view>& variables, const std::vector<std::string_view>& functions,
           std::vector<FormulaError>& errors)
-      : variables_(variables), functions_(functions), errors_(errors) {
-    known_ = variables;
-    known_.insert(known_.end(), functions.begin(), functions.end());
-  }
+      : variables_(variables), functions_(functions), errors_(errors) {}
 
   void check(const std::vector<Token>& tokens) {
     for (std::size_t i = 0; i < tokens.size(); ++i) {
@@ -95,7 +92,7 @@ class Checker {
     }
     if (!contains(variables_, token.text)) {
       const std::string message = name + " is not a state, input, constant or function";
-      fail(token.position, message + did_you_mean(token.text, known_));
+      fail(token.position, message + did_you_mean(token.text, before_bracket ? functions_ : variables_));
     } else if (before_bracket) {
       fail(token.position, name + " is not a function; a * is missing before the (");
     }
@@ -120,7 +117,6 @@ class Checker {
   const std::vector<std::string_view>& variables_;
   const std::vector<std::string_view>& functions_;
   std::vector<FormulaError>& errors_;
-  std::vector<std::string_view> known_;
   std::vector<Bracket> brackets_;
 };
 

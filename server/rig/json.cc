@@ -112,8 +112,9 @@ std::string json_of(const Node& top) {
 }  // namespace
 
 std::string to_json(std::string_view text) {
-  Problems ignored("", text);
-  const std::optional<Node> top = parse_document(text, ignored);
+  const std::string_view content = without_byte_order_mark(text);
+  Problems ignored("", content);
+  const std::optional<Node> top = parse_document(content, ignored);
   return top ? json_of(*top) : "{}";
 }
 

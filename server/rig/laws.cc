@@ -24,7 +24,7 @@ std::optional<CheckedFormula> checked(const Item& item, Context& context) {
     report_rule(item, "a formula or a number", context.problems);
     return std::nullopt;
   }
-  if (!context.sizes_right || context.problems.full()) return std::nullopt;
+  if (!context.names_known || context.problems.full()) return std::nullopt;
   CheckedFormula out = compile_formula(item.node->text, context.scope);
   for (const FormulaError& error : out.errors) report_formula(item, error, context.problems);
   return out.formula ? std::optional(std::move(out)) : std::nullopt;
@@ -51,7 +51,8 @@ ReadLaw law_of(const CheckedFormula& checked_formula, const Context& context) {
 
 void report_start(const Item& item, double value, std::string_view rule, Problems& problems) {
   problems.add(item.place(), item.path,
-               "gives " + number_text(value) + " at the start; must be " + std::string(rule) + " there");
+               "gives " + (std::isnan(value) ? "nan" : number_text(value)) + " at the start; must be " +
+                   std::string(rule) + " there");
 }
 
 }  // namespace

@@ -24,7 +24,7 @@ struct Context {
   std::vector<double> inputs = {};
   std::vector<Region> state_regions = {};
   std::vector<Region> input_regions = {};
-  bool sizes_right = true;   ///< false: there are too many names to look at formulas
+  bool names_known = true;   ///< false: a part is no map or too large; formulas are not looked at
   bool starts_right = true;  ///< false: values at the start mean nothing
 };
 

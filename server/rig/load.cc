@@ -78,7 +78,10 @@ class Loader {
   std::vector<Item> needed_entries(std::string_view key, std::size_t most) {
     const auto part = fields_.required(key);
     std::vector<Item> out = entries(key, most, part);
-    if (part && part->node->is_map() && out.empty()) report_rule(*part, "a map of at least one", problems_);
+    if (part && part->node->is_map() && out.empty()) {
+      problems_.add(part->place(), part->path, "has no entries; must have at least one");
+    }
+    if (out.empty()) context_.names_known = false;
     return out;
   }
 
@@ -88,11 +91,12 @@ class Loader {
     if (!part) return out;
     if (!part->node->is_map()) {
       report_rule(*part, "a map by name", problems_);
+      context_.names_known = false;
       return out;
     }
     for (const Node& node : part->node->items) out.push_back({&node, join(key, node.key)});
     if (out.size() <= most) return out;
-    context_.sizes_right = false;
+    context_.names_known = false;
     problems_.add(
         out[most].node->key_at, part->path,
         "has " + std::to_string(out.size()) + " entries; at most " + std::to_string(most) + " are possible");
@@ -152,12 +156,11 @@ void sort_by_name(Node& top) {
   }
 }
 
-std::shared_ptr<const Rig> load_checked(std::string_view text, Problems& problems, Problems& unsupported) {
+std::shared_ptr<Rig> load_checked(std::string_view text, Problems& problems, Problems& unsupported) {
   std::optional<Node> top = parse_document(text, problems);
   if (!top) return nullptr;
   if (is_json(text)) sort_by_name(*top);
   std::shared_ptr<Rig> rig = Loader(*top, problems, unsupported).load();
-  rig->text = text;
   if (!problems.empty() || !unsupported.empty()) return nullptr;
   // Nothing should be left for the engine to find; if it does, say so rather than run.
   if (std::string why = rig->model->problem(); !why.empty()) problems.add({0, 0}, "", std::move(why));
@@ -167,11 +170,14 @@ std::shared_ptr<const Rig> load_checked(std::string_view text, Problems& problem
 }  // namespace
 
 Loaded load(std::string_view text, std::string_view file) {
-  Problems problems(file, text);
-  Problems unsupported(file, text);
+  const std::string_view content = without_byte_order_mark(text);
+  Problems problems(file, content);
+  Problems unsupported(file, content);
   Loaded out;
   try {
-    out.rig = load_checked(text, problems, unsupported);
+    const std::shared_ptr<Rig> rig = load_checked(content, problems, unsupported);
+    if (rig) rig->text = text;
+    out.rig = rig;
   } catch (const std::exception& error) {  // no memory left, or a defect of ours
     problems.add({0, 0}, "", std::string("cannot be loaded: ") + error.what());
   } catch (...) {

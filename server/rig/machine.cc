@@ -90,6 +90,7 @@ engine::StateModel* state_of(const Item& item, engine::Model& model, Problems& p
     if (state.name == item.node->key) return &state;
     names.push_back(state.name);
   }
+  if (names.empty()) return nullptr;  // that has been reported
   problems.add(item.node->key_at, item.path, "is not a state" + did_you_mean(item.node->key, names));
   return nullptr;
 }

@@ -12,6 +12,7 @@ namespace steelyard::rig {
 namespace {
 
 constexpr std::size_t kMaxLength = 64;  // longer names are no slips of the pen, and would cost time
+constexpr std::size_t kMostListed = 25;
 
 }  // namespace
 
@@ -37,7 +38,7 @@ int edit_distance(std::string_view a, std::string_view b) {
 std::string_view nearest(std::string_view name, std::span<const std::string_view> known) {
   if (name.size() > kMaxLength) return {};
   std::string_view best;
-  int fewest = static_cast<int>((name.size() + 2) / 3) + 1;
+  int fewest = static_cast<int>((name.size() + 3) / 3) + 1;
   for (const std::string_view candidate : known) {
     if (candidate.size() > kMaxLength) continue;
     const int edits = edit_distance(name, candidate);
@@ -51,7 +52,11 @@ std::string_view nearest(std::string_view name, std::span<const std::string_view
 
 std::string did_you_mean(std::string_view name, std::span<const std::string_view> known) {
   const std::string_view best = nearest(name, known);
-  return best.empty() ? std::string() : "; did you mean " + std::string(best) + "?";
+  if (!best.empty()) return "; did you mean " + std::string(best) + "?";
+  if (known.empty() || known.size() > kMostListed) return {};
+  std::string all;
+  for (const std::string_view other : known) all += (all.empty() ? "" : ", ") + std::string(other);
+  return "; known are " + all;
 }
 
 }  // namespace steelyard::rig

@@ -13,10 +13,10 @@ namespace steelyard::rig {
 [[nodiscard]] int edit_distance(std::string_view a, std::string_view b);
 
 /// The known name with the fewest edits to `name` (the first of equals), or empty where none is near:
-/// more than one edit in three characters would be a guess.
+/// much more than one edit in three characters would be a guess.
 [[nodiscard]] std::string_view nearest(std::string_view name, std::span<const std::string_view> known);
 
-/// "; did you mean X?", or empty where none is near.
+/// "; did you mean X?", or where none is near "; known are X, Y, Z", as far as that helps.
 [[nodiscard]] std::string did_you_mean(std::string_view name, std::span<const std::string_view> known);
 
 }  // namespace steelyard::rig

@@ -17,7 +17,7 @@ bool is_control(char c) { return static_cast<unsigned char>(c) < 0x20U || c == 0
 
 std::string Problem::text() const {
   std::string out = file;
-  if (line > 0) out += ":" + std::to_string(line) + ":" + std::to_string(column);
+  if (line > 0) out.append(":").append(std::to_string(line)).append(":").append(std::to_string(column));
   out += ": ";
   if (!field.empty()) out += field + ": ";
   return out + message;
@@ -77,7 +77,9 @@ std::string shown(std::string_view text) {
 }
 
 std::string join(std::string_view parent, std::string_view key) {
-  return parent.empty() ? shown(key) : std::string(parent) + "." + shown(key);
+  std::string out(parent);
+  if (!out.empty()) out += '.';
+  return out.append(key.empty() ? "\"\"" : shown(key));
 }
 
 }  // namespace steelyard::rig

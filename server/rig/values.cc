@@ -21,11 +21,6 @@ std::string listed(std::span<const std::string_view> names) {
   return out;
 }
 
-std::string unknown_key_message(std::string_view key, std::span<const std::string_view> known) {
-  const std::string near = did_you_mean(key, known);
-  return "is not a known key" + (near.empty() ? "; known are " + listed(known) : near);
-}
-
 bool is_control(char c) { return static_cast<unsigned char>(c) < 0x20U || c == 0x7F; }
 
 }  // namespace
@@ -39,7 +34,7 @@ Fields::Fields(const Item& map, std::span<const std::string_view> known, Problem
   for (const Node& item : map.node->items) {
     if (problems.full()) return;
     if (std::find(known.begin(), known.end(), item.key) != known.end()) continue;
-    problems.add(item.key_at, join(map.path, item.key), unknown_key_message(item.key, known));
+    problems.add(item.key_at, join(map.path, item.key), "is not a known key" + did_you_mean(item.key, known));
   }
 }
 
@@ -93,17 +88,19 @@ std::optional<double> read_number(const Item& item, const Limit& limit, Problems
   const auto value = item.node->is_scalar() ? parse_number(item.node->text) : std::nullopt;
   if (value && limit.allows(*value)) return value;
   const std::string rule = limit.rule();
-  const std::string kind = rule.empty() ? "a finite number" : "a number ";
+  const std::string kind = rule.empty() ? "a finite number" : "a number, ";
   report_rule(item, value ? rule : kind + rule, problems);
   return std::nullopt;
 }
 
 std::optional<double> read_duration_s(const Item& item, Problems& problems, Zero zero) {
-  const auto value = item.node->is_scalar() ? parse_duration_s(item.node->text) : std::nullopt;
+  const bool is_negative = item.node->is_scalar() && item.node->text.starts_with('-');
+  const std::string_view text = std::string_view(item.node->text).substr(is_negative ? 1 : 0);
+  const auto value = item.node->is_scalar() ? parse_duration_s(text) : std::nullopt;
   if (!value) {
     report_rule(item, kDurationForm, problems);
-  } else if (*value == 0.0 && zero == Zero::kRefused) {
-    report_rule(item, "longer than 0", problems);
+  } else if (is_negative || (*value == 0.0 && zero == Zero::kRefused)) {
+    report_rule(item, zero == Zero::kAllowed ? "0 or longer" : "longer than 0", problems);
   } else if (*value > kLongest_s) {
     report_rule(item, "at most 36525 d (100 years)", problems);
   } else {
