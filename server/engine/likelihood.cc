@@ -38,13 +38,15 @@ double Likelihood::log_regular(double e, const Gamma& g, double total_variance, 
 }
 
 // Updates g and returns the noise variance at the fixed point of (noise variance, gain), which is scalar.
-double Likelihood::learn(Gamma& g, double e, double s, double r, double spec, double weight) const {
+// second_moment: of (y − expected)² given what the reading tells, as a function of the total variance.
+template <typename SecondMoment>
+double Likelihood::learn(Gamma& g, double s, double r, double spec, double weight,
+                         const SecondMoment& second_moment) const {
   if (!model_.options.learn_precision) return r;
   Gamma next = g;
   for (int i = 0; i < kFixedPointSteps; ++i) {
     const double gain = s / (s + r);
-    const double kept = e * (1.0 - gain);
-    const double squared = kept * kept + s * (1.0 - gain);
+    const double squared = (1.0 - gain) * (1.0 - gain) * second_moment(s + r) + s * (1.0 - gain);
     next = {g.a + 0.5 * weight, g.b + 0.5 * weight * squared / spec};
     const double before = r;
     r = noise_variance(next, spec);
@@ -87,16 +89,26 @@ double Likelihood::repeat_probability(const Hypothesis& h, const Occasion& o) co
   return o.regular * inside + (1.0 - o.regular) * o.resolution / o.span;
 }
 
+// The true value lies beyond the bound: the state moves by the moments of a normal that is cut off there
+// (Tobin 1958). The noise learns too: were it to learn from the readings inside the range alone, it would see
+// the tails only.
 Absorbed Likelihood::absorb_censored(Hypothesis& h, const Occasion& o, double r) {
-  Step step;
-  step.total_variance = expected_.variance + r;
-  const double sd = std::sqrt(step.total_variance);
   const double side = o.censoring == Censoring::kBelow ? 1.0 : -1.0;
-  const double z = side * (o.bound - expected_.mean) / sd;
-  const double log_inside = log_normal_cdf(z) + std::log(o.regular);
+  const double reach = side * (o.bound - expected_.mean);
+  const double s = expected_.variance;
+  const double log_inside = log_normal_cdf(reach / std::sqrt(s + r)) + std::log(o.regular);
   Absorbed out;
   out.log_likelihood = log_sum(log_inside, std::log((1.0 - o.regular) * o.elsewhere));
+  Step step;
   step.weight = std::exp(log_inside - out.log_likelihood);
+  const auto second_moment = [reach](double total) {
+    const double z = reach / std::sqrt(total);
+    return total * std::max(1.0 - z * inverse_mills(z), 0.0);
+  };
+  step.total_variance =
+      s + learn(h.noise[o.channel], s, r, expected_.spec_variance, step.weight, second_moment);
+  const double sd = std::sqrt(step.total_variance);
+  const double z = reach / sd;
   const double mills = inverse_mills(z);
   step.shift = -side * mills * sd;
   step.shrink = std::clamp(mills * (z + mills), 0.0, 1.0);
@@ -121,7 +133,8 @@ Absorbed Likelihood::absorb(Hypothesis& h, const Occasion& o) {
   Step step;
   step.weight = std::exp(log_inside - out.log_likelihood);
   step.shift = e;
-  step.total_variance = s + learn(g, e, s, r, expected_.spec_variance, step.weight);
+  step.total_variance =
+      s + learn(g, s, r, expected_.spec_variance, step.weight, [e](double) { return e * e; });
   out.influence = influence(step);
   move(h, step);
   return out;

@@ -52,7 +52,9 @@ class Likelihood {
     double total_variance = 1.0;
   };
   double log_regular(double e, const Gamma& g, double total_variance, double resolution) const;
-  double learn(Gamma& g, double e, double s, double r, double spec, double weight) const;
+  template <typename SecondMoment>
+  double learn(Gamma& g, double s, double r, double spec, double weight,
+               const SecondMoment& second_moment) const;
   Absorbed absorb_censored(Hypothesis& h, const Occasion& occasion, double r);
   double repeat_probability(const Hypothesis& h, const Occasion& occasion) const;
   void move(Hypothesis& h, const Step& step) const;
