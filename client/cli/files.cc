@@ -7,7 +7,7 @@
 #include <cstdio>
 #include <cstring>
 #include <filesystem>
-#include <iostream>
+#include <fstream>
 #include <optional>
 #include <system_error>
 #include <utility>
@@ -52,18 +52,16 @@ std::shared_ptr<const rig::Rig> load_rig_file(const std::string& path) {
 
 bool open_log(const std::string& path, LogFile& log) {
   log.name = path == "-" ? "stdin" : path;
-  log.stream = path == "-" ? &std::cin : &log.file;
-  if (path == "-") return true;
   std::error_code error;
-  if (std::filesystem::is_directory(path, error)) {
+  if (path != "-" && std::filesystem::is_directory(path, error)) {
     complain(path + ": is a directory; must be a file");
     return false;
   }
-  log.file.open(path, std::ios::binary);
-  if (!log.file) {
+  if (!log.input.open(path)) {
     complain(path + ": cannot be opened: " + std::strerror(errno));
     return false;
   }
+  // Only a regular file has a size; for the others there is no progress bar.
   const std::uintmax_t bytes = std::filesystem::file_size(path, error);
   if (!error) log.bytes = bytes;
   return true;

@@ -3,12 +3,12 @@
 #pragma once
 
 #include <cstdint>
-#include <fstream>
 #include <functional>
 #include <istream>
 #include <memory>
 #include <string>
 
+#include "cli/input.h"
 #include "lib/log/log_csv.h"
 #include "rig/rig.h"
 
@@ -20,8 +20,8 @@ namespace steelyard::client {
 /// A log that is open for reading; "-" is stdin.
 struct LogFile {
   std::string name;  ///< for messages
-  std::ifstream file;
-  std::istream* stream = nullptr;
+  FileInput input;
+  std::istream stream{&input};
   std::uint64_t bytes = 0;  ///< 0: not known
 };
 /// False after telling stderr why.

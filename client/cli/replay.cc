@@ -10,12 +10,9 @@
 #include "cli/columns.h"
 #include "cli/commands.h"
 #include "cli/files.h"
+#include "cli/ordered_log.h"
 #include "cli/output.h"
-#include "cli/progress.h"
-#include "cli/refusals.h"
 #include "cli/signals.h"
-#include "lib/log/log_csv.h"
-#include "lib/log/reorder.h"
 #include "lib/log/stretches.h"
 #include "timeline/timeline.h"
 #include "timeline/words.h"
@@ -23,7 +20,6 @@
 namespace steelyard::client {
 namespace {
 
-constexpr std::uint64_t kRowsPerStep = 256;  // rows read before the engine runs on
 constexpr double kNsPerS = 1e9;
 
 struct Options {
@@ -48,44 +44,31 @@ Names names_of_model(const engine::Model& model) {
 /// One run from a log to the outputs.
 class Replay {
  public:
-  Replay(const Options& options, std::shared_ptr<const rig::Rig> rig, LogFile& log)
+  Replay(const Options& options, std::shared_ptr<const rig::Rig> rig, LogFile& file)
       : options_(options),
         rig_(std::move(rig)),
         names_(names_of_model(*rig_->model)),
         timeline_(rig_),
-        source_(timeline_.source_number(log.name)),
-        reorder_(*rig_),
+        source_(timeline_.source_number(file.name)),
         stretches_(names_.channels.size(), static_cast<engine::TimeNs>(rig_->response_s * kNsPerS)),
         out_(options.out),
         channels_(options.channels),
-        progress_("replay", log.bytes),
-        refusals_(progress_),
-        file_(log.name),
-        reader_(*log.stream, log.name, names_of(rig_), [this](const rig::Problem& one) { wrong(one); }),
+        log_(file, rig_, "replay"),
         out_of_range_(names_.channels.size()) {}
 
   int run() {
-    if (!reader_.open()) return kWrongInput;
-    header_is_read_ = true;
+    if (!log_.open()) return kWrongInput;
     if (!open_outputs()) return kFailed;
-    read_all();
+    std::vector<timeline::Reading> ready;
+    while (going() && log_.next(ready)) step(ready);
     if (interrupted()) {
-      progress_.say("steelyard: stopped");
+      log_.progress().say("steelyard: stopped");
       return kFailed;
     }
-    if (going()) step(true);
     return finish();
   }
 
  private:
-  void wrong(const rig::Problem& problem) {
-    if (header_is_read_) {
-      refusals_.add(problem);
-    } else {
-      progress_.say(problem.text());
-    }
-  }
-
   bool open_outputs() {
     for (Output* const output : {&out_, &channels_, &words_}) {
       if (output == &channels_ && !with_channels()) continue;
@@ -106,32 +89,10 @@ class Replay {
   [[nodiscard]] bool with_channels() const { return !options_.channels.empty(); }
   [[nodiscard]] bool going() const { return !interrupted() && !out_.failed() && !channels_.failed(); }
 
-  void read_all() {
-    LogRow row;
-    std::uint64_t rows = 0;
-    while (going() && reader_.next(row)) {
-      for (const LogReading& reading : row.readings) {
-        if (!reorder_.add(reading)) {
-          refusals_.add(too_old(*rig_, file_, row, reading, reorder_.behind_s(reading)));
-        }
-      }
-      if (++rows % kRowsPerStep != 0) continue;
-      step(false);
-      progress_.show(reader_.bytes_read());
-    }
-  }
-
-  void step(bool last) {
-    ready_.clear();
-    if (last) {
-      reorder_.release_rest(ready_);
-    } else {
-      reorder_.release(ready_);
-    }
-    if (ready_.empty()) return;
-    for (timeline::Reading& reading : ready_) reading.source = source_;
-    timeline_.run(ready_, outcomes_, [this](engine::TimeNs time_ns) { moment(time_ns); });
-    for (std::size_t i = 0; i < outcomes_.size(); ++i) count(ready_[i], outcomes_[i]);
+  void step(std::vector<timeline::Reading>& ready) {
+    for (timeline::Reading& reading : ready) reading.source = source_;
+    timeline_.run(ready, outcomes_, [this](engine::TimeNs time_ns) { moment(time_ns); });
+    for (std::size_t i = 0; i < outcomes_.size(); ++i) count(ready[i], outcomes_[i]);
   }
 
   void count(const timeline::Reading& reading, timeline::Outcome outcome) {
@@ -139,8 +100,8 @@ class Replay {
       ++out_of_range_[static_cast<std::size_t>(reading.signal.index)];
     }
     if (outcome == timeline::Outcome::kNotFinite || outcome == timeline::Outcome::kTooOld) {
-      refusals_.add({file_, 0, 0, signal_name(*rig_, reading.signal),
-                     "reading of " + time_text(reading.time_ns, options_.time) + " could not be taken"});
+      log_.refuse({log_.name(), 0, 0, signal_name(*rig_, reading.signal),
+                   "reading of " + time_text(reading.time_ns, options_.time) + " could not be taken"});
     }
   }
 
@@ -173,7 +134,7 @@ class Replay {
   /// Words go where the data does not.
   void tell(const std::string& line) {
     if (options_.out.empty()) {
-      progress_.say(line);
+      log_.progress().say(line);
     } else {
       words_.write(line + "\n");
       words_.flush();
@@ -193,23 +154,23 @@ class Replay {
   void notes() {
     for (std::size_t i = 0; i < out_of_range_.size(); ++i) {
       if (out_of_range_[i] == 0) continue;
-      progress_.say("steelyard: " + names_.channels[i] + ": " + std::to_string(out_of_range_[i]) +
-                    " readings outside its range were not fused");
+      log_.progress().say("steelyard: " + names_.channels[i] + ": " + std::to_string(out_of_range_[i]) +
+                          " readings outside its range were not fused");
     }
-    refusals_.close();
   }
 
   int finish() {
     if (options_.words && going()) summarise();
     notes();
+    const bool all_used = log_.close();
     for (Output* const output : {&out_, &channels_}) {
       if (output == &channels_ && !with_channels()) continue;
       if (output->finish()) continue;
       complain(output->error());
       return kFailed;
     }
-    if (reader_.read_failed()) return kFailed;
-    return refusals_.count() > 0 ? kWrongInput : kDone;
+    if (log_.read_failed()) return kFailed;
+    return all_used ? kDone : kWrongInput;
   }
 
   const Options& options_;
@@ -217,18 +178,12 @@ class Replay {
   Names names_;
   timeline::Timeline timeline_;
   std::uint32_t source_;
-  Reorder reorder_;
   Stretches stretches_;
   Output out_;
   Output channels_;
   Output words_{""};
-  Progress progress_;
-  Refusals refusals_;
-  std::string file_;
-  LogReader reader_;
-  bool header_is_read_ = false;
+  OrderedLog log_;
   std::vector<std::uint64_t> out_of_range_;
-  std::vector<timeline::Reading> ready_;
   std::vector<timeline::Outcome> outcomes_;
   std::vector<ChannelView> views_;
   engine::Estimate estimate_;

@@ -185,7 +185,7 @@ const char* ne107_status(const ChannelEstimate& channel) {
 std::string rounded(double value, double sd) {
   if (!std::isfinite(value) || !std::isfinite(sd) || !(sd > 0.0)) return general(value, 6);
   const int power = last_digit_power(sd);
-  if (power < -12) return general(value, 6);
+  if (power < -12 || power > 12) return general(value, 6);
   std::string text;
   if (power < 0) {
     text = fixed(value, -power);

@@ -1,0 +1,288 @@
+// SPDX-License-Identifier: Apache-2.0
+// The command as a program: check and replay, exit codes, files, messages. The service's side is in
+// service_test.cc.
+#include <fcntl.h>
+#include <gtest/gtest.h>
+#include <signal.h>
+#include <sys/stat.h>
+#include <unistd.h>
+
+#include <algorithm>
+#include <chrono>
+#include <string>
+#include <thread>
+#include <vector>
+
+#include "client/basin.h"
+#include "client/process.h"
+
+namespace steelyard::client {
+namespace {
+
+using Arguments = std::vector<std::string>;
+
+class CommandTest : public ::testing::Test {
+ protected:
+  void SetUp() override {
+    rig_ = folder_.write("basin.yaml", kBasinRig);
+    rows_ = basin_rows(200, 100);
+    log_ = folder_.write("log.csv", log_of(rows_));
+  }
+  [[nodiscard]] Finished steelyard(Arguments arguments, const std::string& input = "/dev/null") const {
+    arguments.insert(arguments.begin(), STEELYARD_COMMAND);
+    return run(folder_, arguments, input);
+  }
+  [[nodiscard]] Finished replay(const std::string& log, Arguments more = {}) const {
+    Arguments arguments{"replay", "--rig", rig_, "--log", log};
+    arguments.insert(arguments.end(), more.begin(), more.end());
+    return steelyard(arguments);
+  }
+
+  Folder folder_;
+  std::string rig_;
+  std::vector<std::string> rows_;
+  std::string log_;
+};
+
+std::size_t lines(const std::string& text) {
+  return static_cast<std::size_t>(std::count(text.begin(), text.end(), '\n'));
+}
+
+bool has(const std::string& text, const std::string& part) { return text.find(part) != std::string::npos; }
+
+TEST_F(CommandTest, WrongUsageIs2AndHelpIs0) {
+  const std::vector<Arguments> wrong{
+      {},
+      {"weigh"},
+      {"check"},
+      {"replay"},
+      {"replay", "--rig", rig_},
+      {"replay", "--rig", rig_, "--log", log_, "--time", "noon"},
+      {"replay", "--rig", rig_, "--log", log_, "--settled"},
+      {"replay", "--rig", rig_, "--log", log_, "--report", "r.html"},
+      {"replay", "--rig", rig_, "--log", log_, "--episodes", "e.csv"},
+      {"replay", "--rig", rig_, "--log", log_, "--out", "same", "--channels", "same"},
+      {"replay", "--rig", rig_, "--log", folder_.path("none.csv")},
+      {"replay", "--rig", rig_, "--log", folder_.path("")},
+      {"replay", "--rig", folder_.path("none.yaml"), "--log", log_},
+      {"check", folder_.path("none.yaml")},
+      {"feed", "--to", "localhost:1", "--rig", "basin", "--log", log_, "--pace", "slow"},
+      {"feed", "--to", "localhost:1", "--rig", "basin", "--log", "-"},
+      {"watch", "--from", "localhost:1", "--rig", "basin", "--until-idle", "soon"},
+  };
+  for (const Arguments& arguments : wrong) {
+    const Finished end = steelyard(arguments);
+    EXPECT_EQ(end.code, 2) << end.err;
+    EXPECT_EQ(end.out, "");
+    EXPECT_NE(end.err, "");
+  }
+  for (const char* command : {"check", "replay", "feed", "watch"})
+    EXPECT_EQ(steelyard({command, "--help"}).code, 0);
+  EXPECT_EQ(steelyard({"--help"}).code, 0);
+  EXPECT_EQ(steelyard({"--version"}).code, 0);
+}
+
+TEST_F(CommandTest, CheckSaysWhatTheRigMeans) {
+  const Finished end = steelyard({"check", rig_});
+  EXPECT_EQ(end.code, 0);
+  EXPECT_EQ(end.err, "");
+  EXPECT_TRUE(has(end.out, "rig basin: 2 states, 1 input, 2 channels\n")) << end.out;
+  EXPECT_TRUE(has(end.out, "motion    linear")) << end.out;
+  EXPECT_TRUE(has(end.out, "shows alone  level, inflow (rank 2 of 2)")) << end.out;
+  EXPECT_TRUE(has(end.out, "every 30 d (720 h)")) << end.out;
+  EXPECT_TRUE(has(end.out, "pump: has no period")) << end.out;
+  EXPECT_TRUE(has(end.out, "is no safety function")) << end.out;
+}
+
+TEST_F(CommandTest, CheckListsEveryProblemAndEndsWith2) {
+  std::string text = kBasinRig;
+  text.replace(text.find("sd: 0.01"), 8, "sd: -1.0");
+  text.replace(text.rfind("sd: 0.01"), 8, "sd: -2.0");
+  const Finished end = steelyard({"check", folder_.write("wrong.yaml", text)});
+  EXPECT_EQ(end.code, 2);
+  EXPECT_EQ(end.out, "");
+  EXPECT_EQ(lines(end.err), 2U) << end.err;
+  EXPECT_TRUE(has(end.err, "wrong.yaml:")) << end.err;
+}
+
+TEST_F(CommandTest, ReplayWritesOneRowPerReadingTime) {
+  const Finished end = replay(log_);
+  EXPECT_EQ(end.code, 0) << end.err;
+  EXPECT_EQ(end.err, "");
+  EXPECT_EQ(end.out.substr(0, end.out.find('\n')),
+            "time,level,level.sd,inflow,inflow.sd,trust.sonic,trust.radar");
+  EXPECT_EQ(lines(end.out), 1 + 2 * 200U);
+  EXPECT_TRUE(has(end.out, "\n1700000000,"));
+  EXPECT_TRUE(has(end.out, "\n1700000199.25,"));
+}
+
+TEST_F(CommandTest, ReplayIsTheSameBytesTwiceAndInAFile) {
+  const Finished first = replay(log_, {"--channels", folder_.path("c1.csv")});
+  const Finished second =
+      replay(log_, {"--out", folder_.path("o.csv"), "--channels", folder_.path("c2.csv")});
+  EXPECT_EQ(first.code, 0);
+  EXPECT_EQ(second.code, 0);
+  EXPECT_EQ(second.out, "");
+  EXPECT_EQ(first.out, read_file(folder_.path("o.csv")));
+  EXPECT_EQ(read_file(folder_.path("c1.csv")), read_file(folder_.path("c2.csv")));
+  EXPECT_EQ(replay(log_).out, first.out);  // whether or not the channels are asked for
+}
+
+TEST_F(CommandTest, ReplayDoesNotDependOnTheOrderWithinTheHorizon) {
+  std::vector<std::string> shuffled = rows_;
+  for (std::size_t i = 0; i + 20 < shuffled.size(); i += 20) {
+    std::reverse(shuffled.begin() + static_cast<std::ptrdiff_t>(i),
+                 shuffled.begin() + static_cast<std::ptrdiff_t>(i + 20));
+  }
+  const Finished end = replay(folder_.write("shuffled.csv", log_of(shuffled)));
+  EXPECT_EQ(end.code, 0) << end.err;
+  EXPECT_EQ(end.out, replay(log_).out);
+}
+
+TEST_F(CommandTest, ReplayTakesTheWideFormAndStdin) {
+  const std::string wide = "time,pump,sonic,radar\n1700000000,0,2.01,2.0\n1700000001,,2.02,\n";
+  const std::string longer =
+      "time,channel,value\n1700000000,pump,0\n1700000000,radar,2.0\n1700000000,sonic,2.01\n1700000001,sonic,"
+      "2.02\n";
+  const Finished one = replay(folder_.write("wide.csv", wide));
+  const Finished other =
+      steelyard({"replay", "--rig", rig_, "--log", "-"}, folder_.write("long.csv", longer));
+  EXPECT_EQ(one.code, 0) << one.err;
+  EXPECT_EQ(lines(one.out), 3U);
+  EXPECT_EQ(one.out, other.out);
+}
+
+TEST_F(CommandTest, ChannelRowsHaveAllColumns) {
+  ASSERT_EQ(replay(log_, {"--out", "/dev/null", "--channels", folder_.path("c.csv")}).code, 0);
+  const std::string text = read_file(folder_.path("c.csv"));
+  EXPECT_EQ(lines(text), 1 + 2 * 2 * 200U);
+  std::size_t begin = 0;
+  while (begin < text.size()) {
+    const std::size_t end = text.find('\n', begin);
+    EXPECT_EQ(std::count(text.begin() + static_cast<std::ptrdiff_t>(begin),
+                         text.begin() + static_cast<std::ptrdiff_t>(end), ','),
+              17);
+    begin = end + 1;
+  }
+  EXPECT_TRUE(has(text, ",out of specification\n"));
+}
+
+TEST_F(CommandTest, ReplayWritesTimesAsAsked) {
+  EXPECT_TRUE(has(replay(log_, {"--time", "rfc3339"}).out, "\n2023-11-14T22:13:20.25Z,"));
+  EXPECT_TRUE(has(replay(log_, {"--time", "seconds"}).out, "\n1700000000.25,"));
+}
+
+TEST_F(CommandTest, ReplayTellsInWordsWhenWhatAndHowSure) {
+  const Finished to_file = replay(log_, {"--words", "--out", folder_.path("o.csv")});
+  EXPECT_EQ(to_file.code, 0) << to_file.err;
+  EXPECT_EQ(to_file.err, "");
+  EXPECT_TRUE(has(to_file.out, "1700000100")) << to_file.out;
+  EXPECT_TRUE(has(to_file.out, "sonic ")) << to_file.out;
+  EXPECT_TRUE(has(to_file.out, "Stretches in which a channel was not sound:\n  sonic: from 1700000100"))
+      << to_file.out;
+  const Finished to_stdout = replay(log_, {"--words"});
+  EXPECT_EQ(to_stdout.err, to_file.out);
+  EXPECT_EQ(to_stdout.out, read_file(folder_.path("o.csv")));
+}
+
+TEST_F(CommandTest, ALogWithoutFaultsIsSoundInWords) {
+  const std::string log = folder_.write("sound.csv", log_of(basin_rows(100, 1000)));
+  EXPECT_EQ(replay(log, {"--words", "--out", "/dev/null"}).out, "Every channel was sound throughout.\n");
+}
+
+TEST_F(CommandTest, GoodReadingsBesideWrongOnesAreUsedAndTheExitCodeIs2) {
+  std::vector<std::string> rows = rows_;
+  const std::vector<std::string> wrong{"1700000050,sonic,abc",   "1700000050,sonar,2", "1700000050,sonic,nan",
+                                       "1700000050,sonic,inf",   "1700000050,sonic",   "yesterday,sonic,2",
+                                       "1700000050,\"sonic\"x,2"};
+  rows.insert(rows.begin() + 200, wrong.begin(), wrong.end());
+  const Finished end = replay(folder_.write("mixed.csv", log_of(rows)), {"--out", folder_.path("o.csv")});
+  EXPECT_EQ(end.code, 2);
+  EXPECT_EQ(read_file(folder_.path("o.csv")), replay(log_).out);
+  EXPECT_TRUE(has(end.err, "mixed.csv:202:18: sonic: is \"abc\"; must be a number\n")) << end.err;
+  EXPECT_TRUE(has(end.err, "7 refusals in the log; everything else was used")) << end.err;
+}
+
+TEST_F(CommandTest, TheFirst10RefusalsAreShownAndAllCounted) {
+  std::vector<std::string> rows = rows_;
+  for (int i = 0; i < 25; ++i) rows.push_back("1700000199,sonic,x" + std::to_string(i));
+  const Finished end = replay(folder_.write("wrong.csv", log_of(rows)));
+  EXPECT_EQ(end.code, 2);
+  EXPECT_EQ(lines(end.err), 11U) << end.err;
+  EXPECT_TRUE(has(end.err, "25 refusals in the log, of which the first 10 are shown")) << end.err;
+}
+
+TEST_F(CommandTest, RowsBehindTheHorizonAreRefused) {
+  std::vector<std::string> rows = rows_;
+  rows.push_back("1700000100,sonic,2");
+  const Finished end = replay(folder_.write("late.csv", log_of(rows)));
+  EXPECT_EQ(end.code, 2);
+  EXPECT_EQ(end.out, replay(log_).out);
+  EXPECT_TRUE(has(end.err, "late.csv:602:1: sonic: lies ")) << end.err;
+  EXPECT_TRUE(has(end.err, "must lie within the horizon, which is 30 s")) << end.err;
+}
+
+TEST_F(CommandTest, AHeaderThatCannotBeUsedEndsWith2AndNoOutput) {
+  for (const char* text : {"", "\n", "time,sonar\n1,2\n", "a,b\n1,2\n", "time,channel\n", "\"time\n"}) {
+    const Finished end = replay(folder_.write("wrong.csv", text), {"--out", folder_.path("o.csv")});
+    EXPECT_EQ(end.code, 2) << text;
+    EXPECT_TRUE(has(end.err, "wrong.csv:1:")) << end.err;
+  }
+  EXPECT_FALSE(has(read_file(folder_.path("o.csv")), "time"));
+}
+
+TEST_F(CommandTest, AnOutputThatCannotBeWrittenIs1) {
+  EXPECT_EQ(replay(log_, {"--out", "/nowhere/o.csv"}).code, 1);
+  if (::access("/dev/full", W_OK) == 0) {
+    const Finished end = replay(log_, {"--out", "/dev/full"});
+    EXPECT_EQ(end.code, 1);
+    EXPECT_TRUE(has(end.err, "No space left on device")) << end.err;
+  }
+}
+
+TEST_F(CommandTest, ReadingsOutsideTheRangeAreCounted) {
+  std::vector<std::string> rows = rows_;
+  rows.push_back("1700000200,sonic,7");
+  const Finished end = replay(folder_.write("range.csv", log_of(rows)));
+  EXPECT_EQ(end.code, 0);
+  EXPECT_TRUE(has(end.err, "sonic: 1 readings outside its range were not fused")) << end.err;
+}
+
+// An interrupt leaves neither the file nor a part of it, even while the log is waited for.
+TEST_F(CommandTest, AnInterruptLeavesNothingBehind) {
+  const std::string fifo = folder_.path("fifo");
+  ASSERT_EQ(::mkfifo(fifo.c_str(), 0600), 0);
+  const int keep_open = ::open(fifo.c_str(), O_RDWR | O_CLOEXEC);
+  ASSERT_GE(keep_open, 0);
+  const std::string text = log_of(basin_rows(100, 1000));
+  Process process(
+      folder_, {STEELYARD_COMMAND, "replay", "--rig", rig_, "--log", fifo, "--out", folder_.path("o.csv")});
+  ASSERT_EQ(::write(keep_open, text.data(), text.size()), static_cast<ssize_t>(text.size()));
+  const auto has_part = [this] {
+    const std::vector<std::string> names = folder_.names();
+    return std::any_of(names.begin(), names.end(),
+                       [](const std::string& name) { return name.starts_with("o.csv.part"); });
+  };
+  for (int i = 0; i < 1000 && !has_part(); ++i) std::this_thread::sleep_for(std::chrono::milliseconds(10));
+  EXPECT_TRUE(has_part());
+  std::this_thread::sleep_for(std::chrono::milliseconds(100));  // so that it has come to wait
+  process.signal(SIGINT);
+  const Finished end = process.wait();
+  ::close(keep_open);
+  EXPECT_EQ(end.code, 1);
+  EXPECT_EQ(end.err, "steelyard: stopped\n");
+  EXPECT_FALSE(has_part());
+}
+
+TEST_F(CommandTest, AReaderThatHasEnoughIsNoError) {
+  const std::string script = std::string("set -o pipefail; ") + STEELYARD_COMMAND + " replay --rig " + rig_ +
+                             " --log " + folder_.write("long.csv", log_of(basin_rows(5000, 9999))) +
+                             " | head -n 2";
+  const Finished end = run(folder_, {"/bin/bash", "-c", script});
+  EXPECT_EQ(end.code, 0);
+  EXPECT_EQ(lines(end.out), 2U);
+  EXPECT_EQ(end.err, "");
+}
+
+}  // namespace
+}  // namespace steelyard::client
