@@ -10,18 +10,22 @@ namespace steelyard::engine {
 
 class Collector {
  public:
-  explicit Collector(int channels) : channels_(channels) {}
+  explicit Collector(const Model& model);
 
   /// Sorts by key and merges equal keys by moments.
   void merge_equal(Pool& pool);
   /// Normalises the weights, drops those under `floor` and all but the `budget` heaviest; keeps the order.
   /// Returns the log of the sum of the weights before.
   double normalise(Pool& pool, int budget, double floor);
-  /// Indices of the `count` heaviest, heaviest first (ties: by key).
+  /// Indices of the `count` heaviest, heaviest first (ties: by the channels' names).
   const std::vector<int>& heaviest(const Pool& pool, int count);
 
  private:
+  void keep_heaviest(Pool& pool, int budget);
+  [[nodiscard]] bool heavier(const Hypothesis& a, const Hypothesis& b) const;
+
   int channels_;
+  std::vector<int> by_name_;  ///< channels in the order of their names
   std::vector<int> order_;
 };
 
