@@ -43,11 +43,11 @@ struct Patience {
 };
 
 struct PutRig {
-  std::string text;       ///< of a rig file
-  std::string file_name;  ///< for messages
+  std::string text{};       ///< of a rig file
+  std::string file_name{};  ///< for messages
   bool dry_run = false;
-  std::string author;
-  std::string reason;
+  std::string author{};
+  std::string reason{};
 };
 
 /// Safe to use from several threads at once. Feeds may outlive the client.

@@ -33,10 +33,10 @@ struct FeedOptions {
   std::size_t most_in_flight = 131'072;
   /// Called for each refused reading that the service lists, on a thread of the feed's; must not call the
   /// feed.
-  std::function<void(const v1::Refused&)> on_refused;
+  std::function<void(const v1::Refused&)> on_refused{};
   /// Called when a lost connection is noticed (with the reason) and again with OK when it is back, on the
   /// thread that is in open, send or finish; must not call the feed.
-  std::function<void(const grpc::Status&)> on_break;
+  std::function<void(const grpc::Status&)> on_break{};
 };
 
 struct FeedProgress {

@@ -14,7 +14,7 @@ namespace steelyard::service {
 void FeedDesk::open(const std::shared_ptr<FeedSession>& session, const std::string& source,
                     std::vector<std::string> names, Machine& machine) {
   const auto older = std::find_if(feeds_.begin(), feeds_.end(),
-                                  [&](const auto& entry) { return entry.second.source == source; });
+                                  [&](const auto& entry) { return entry.second.name == source; });
   if (older != feeds_.end()) {
     older->second.session->end(
         make_status(Error::kSourceTakenOver,
@@ -26,18 +26,18 @@ void FeedDesk::open(const std::shared_ptr<FeedSession>& session, const std::stri
                                                         machine.rig().name, feeds_.size())));
     return;
   }
-  if (!positions_.contains(source) && positions_.size() >= limits_.sources_per_rig) {
+  if (!sources_.contains(source) && sources_.size() >= limits_.sources_per_rig) {
     session->end(make_status(Error::kLimit, fmt::format("rig {}: has seen {} sources; no more are allowed",
-                                                        machine.rig().name, positions_.size())));
+                                                        machine.rig().name, sources_.size())));
     return;
   }
-  positions_.try_emplace(source, 0);
   Feed& feed = feeds_[session.get()];
   feed.session = session;
-  feed.source = source;
+  feed.name = source;
+  feed.source = &sources_[source];
   feed.names = std::move(names);
   look_up(feed, machine);
-  session->opened(describe(feed, machine), positions_[source], true);
+  session->opened(describe(feed, machine), feed.source->position, true);
 }
 
 void FeedDesk::close(const FeedSession* session) { feeds_.erase(session); }
@@ -49,14 +49,14 @@ void FeedDesk::end_all(const grpc::Status& status) {
 }
 
 void FeedDesk::look_up(Feed& feed, Machine& machine) const {
-  feed.number = machine.source_number(feed.source);
+  feed.number = machine.source_number(feed.name);
   feed.table.clear();
   for (const std::string& name : feed.names) feed.table.push_back(machine.rig().find(name));
 }
 
 v1::Opened FeedDesk::describe(const Feed& feed, const Machine& machine) const {
   v1::Opened opened;
-  opened.set_next_sequence(positions_.at(feed.source) + 1);
+  opened.set_next_sequence(feed.source->position + 1);
   opened.set_revision(machine.revision());
   for (std::size_t i = 0; i < feed.names.size(); ++i) {
     if (!feed.table[i]) opened.add_unknown_channels(feed.names[i]);
@@ -67,7 +67,7 @@ v1::Opened FeedDesk::describe(const Feed& feed, const Machine& machine) const {
 void FeedDesk::look_up_again(Machine& machine) {
   for (auto& [key, feed] : feeds_) {
     look_up(feed, machine);
-    feed.session->opened(describe(feed, machine), positions_[feed.source], false);
+    feed.session->opened(describe(feed, machine), feed.source->position, false);
   }
 }
 
@@ -85,7 +85,7 @@ void FeedDesk::begin(const std::shared_ptr<FeedSession>& session, std::vector<Ro
 }
 
 void FeedDesk::drop_repeats(Feed& feed) {
-  const std::uint64_t position = positions_[feed.source];
+  const std::uint64_t position = feed.source->position;
   const auto fresh =
       std::find_if(rows_.begin(), rows_.end(), [&](const Row& row) { return row.sequence > position; });
   feed.repeated_total += static_cast<std::uint64_t>(fresh - rows_.begin());
@@ -110,7 +110,7 @@ void FeedDesk::run_chunk(Machine& machine, const timeline::Timeline::OnMoment& o
   const std::size_t end = chunk_end();
   readings_.clear();
   passed_.clear();
-  first_count_ = counted_ + 1;
+  first_count_ = entry->second.source->counted + 1;
   for (; done_ < end; ++done_) sift(rows_[done_], machine);
   if (!readings_.empty()) {
     machine.run(readings_, outcomes_, on_moment);
@@ -132,7 +132,9 @@ void FeedDesk::sift(const Row& row, const Machine& machine) {
     return refuse(row.sequence, v1::UNKNOWN_CHANNEL,
                   fmt::format("{}: is no channel or input of rig {}", name, machine.rig().name));
   }
-  if (!std::isfinite(row.value)) {
+  // What a source calls bad may be any number.
+  const bool usable = row.quality == v1::GOOD || row.quality == v1::UNCERTAIN;
+  if (usable && !std::isfinite(row.value)) {
     return refuse(row.sequence, v1::NOT_FINITE,
                   fmt::format("{}: value is {}; must be finite", name, row.value));
   }
@@ -152,8 +154,8 @@ void FeedDesk::sift(const Row& row, const Machine& machine) {
                     name, row.time_ns, 1e-9 * static_cast<double>(row.time_ns - now_ns),
                     limits_.ahead_ns / 1'000'000'000));
   }
-  readings_.push_back(
-      {row.time_ns, *signal, row.value, static_cast<engine::Quality>(row.quality), feed.number, ++counted_});
+  readings_.push_back({row.time_ns, *signal, row.value, static_cast<engine::Quality>(row.quality),
+                       feed.number, ++feed.source->counted});
   passed_.push_back(row);
 }
 
@@ -182,7 +184,7 @@ void FeedDesk::refuse(std::uint64_t sequence, v1::RefusalReason reason, const st
 
 void FeedDesk::finish_message() {
   Feed& feed = feeds_.at(current_);
-  std::uint64_t& position = positions_[feed.source];
+  std::uint64_t& position = feed.source->position;
   position = std::max(position, last_sequence_);
   feed.session->dealt({position, std::move(refused_), feed.refused_total, feed.repeated_total});
   refused_.clear();

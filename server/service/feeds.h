@@ -42,9 +42,14 @@ class FeedDesk {
   void look_up_again(Machine& machine);
 
  private:
+  struct Source {
+    std::uint64_t position = 0;  // sequence number of the last reading dealt with
+    std::uint64_t counted = 0;   // readings given to timelines
+  };
   struct Feed {
     std::shared_ptr<FeedSession> session;
-    std::string source;
+    std::string name;          // of the source
+    Source* source = nullptr;  // in sources_, whose entries stay where they are
     std::uint32_t number = 0;  // of the source in the timeline
     std::vector<std::string> names;
     std::vector<std::optional<rig::Signal>> table;  // by name
@@ -65,9 +70,7 @@ class FeedDesk {
   const Limits& limits_;
   const Clock& clock_;
   std::map<const FeedSession*, Feed> feeds_;
-  std::map<std::string, std::uint64_t, std::less<>>
-      positions_;              // by source; bounded by Limits::sources_per_rig
-  std::uint64_t counted_ = 0;  // readings given to timelines
+  std::map<std::string, Source, std::less<>> sources_;  // by name; bounded by Limits::sources_per_rig
 
   // The message that is being run.
   const FeedSession* current_ = nullptr;

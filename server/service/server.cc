@@ -11,7 +11,7 @@
 #include <algorithm>
 #include <charconv>
 #include <fstream>
-#include <iterator>
+#include <sstream>
 #include <vector>
 
 namespace steelyard::service {
@@ -30,6 +30,22 @@ void set_channel_arguments(grpc::ServerBuilder& builder) {
   builder.AddChannelArgument(GRPC_ARG_KEEPALIVE_TIMEOUT_MS, kKeepaliveTimeoutMs);
   builder.AddChannelArgument(GRPC_ARG_HTTP2_MIN_RECV_PING_INTERVAL_WITHOUT_DATA_MS, kKeepaliveTimeoutMs);
   builder.AddChannelArgument(GRPC_ARG_KEEPALIVE_PERMIT_WITHOUT_CALLS, 1);
+}
+
+/// 127.0.0.0/8 in figures: "127.example" is a name that may lead anywhere.
+bool is_ipv4_loopback(const std::string& host) {
+  return host.starts_with("127.") && host.find_first_not_of("0123456789.") == std::string::npos;
+}
+
+/// False also for a directory, whose stream opens and then throws.
+bool read_file(const std::filesystem::path& file, std::string& text) {
+  std::error_code error;
+  if (!std::filesystem::is_regular_file(file, error)) return false;
+  std::ifstream in(file, std::ios::binary);
+  std::ostringstream out;
+  out << in.rdbuf();
+  text = out.str();
+  return in.is_open() && !in.bad();
 }
 
 }  // namespace
@@ -73,9 +89,8 @@ int Server::put_directory(const std::filesystem::path& directory) {
 }
 
 void Server::put_file(const std::filesystem::path& file, int& wrong) {
-  std::ifstream in(file, std::ios::binary);
-  std::string text((std::istreambuf_iterator<char>(in)), std::istreambuf_iterator<char>());
-  if (!in.is_open() || in.bad()) {
+  std::string text;
+  if (!read_file(file, text)) {
     spdlog::error("{}: cannot be read", file.string());
     ++wrong;
     return;
@@ -98,7 +113,7 @@ void Server::shut_down() {
 
 bool is_loopback(const std::string& address) {
   const std::string host = address.substr(0, address.rfind(':'));
-  return host == "localhost" || host == "[::1]" || host.starts_with("127.");
+  return host == "localhost" || host == "[::1]" || is_ipv4_loopback(host);
 }
 
 std::string check_address(const std::string& address) {
