@@ -43,6 +43,8 @@ TEST(Affine, CoefficientsAreExact) {
   expect_form("(inflow - pump) / area", 0, 1 / 120.0, -1 / 120.0, 0);
   expect_form("1e6 + 0.001*level", 0.001, 0, 0, 1e6);
   expect_form("-(level + 2*inflow)*3", -3, -6, 0, 0);
+  expect_form("(level - 0.5)*0.7 + 3*0.1*inflow", 0.7, 0.3, 0, -0.35);
+  expect_form("0.7*(0.3*level + 1.1*pump)/0.9*9", 2.1, 0, 7.7, 0);
   expect_form("42", 0, 0, 0, 42);
   expect_form("0*level", 0, 0, 0, 0);
   expect_form("level^1", 1, 0, 0, 0);
@@ -51,9 +53,9 @@ TEST(Affine, CoefficientsAreExact) {
 TEST(Affine, BendsAreFoundWhereverTheyAre) {
   for (const std::string_view text :
        {"level^2", "level*inflow", "pump*level", "abs(level)", "max(level, 0)", "max(level - 4.2, 0)",
-        "sqrt(level)", "sin(level)", "level + tiny*inflow^2", "exp(level)", "1/level", "rint(level)",
-        "sign(level)", "level + 1e-6*abs(inflow - 0.1)", "min(level, 5)", "min(level, 1e5)",
-        "level*1e300*1e300", "0/level"}) {
+        "sqrt(level)", "sin(level)", "level + tiny*inflow^2", "level + tiny*sin(level)", "exp(level)",
+        "1/level", "rint(level)", "sign(level)", "level + 1e-6*abs(inflow - 0.1)", "min(level, 5)",
+        "min(level, 1e5)", "level*1e300*1e300", "0/level"}) {
     EXPECT_FALSE(affine(text)) << text;
   }
 }
@@ -65,18 +67,27 @@ TEST(Affine, RandomCoefficientsComeBack) {
   std::uniform_int_distribution<int> digits(-999, 999);
   std::uniform_int_distribution<int> exponent(-6, 3);
   for (int i = 0; i < 300; ++i) {
-    const auto number = [&] { return digits(random) * std::pow(10.0, exponent(random)); };
-    const double a = number();
-    const double b = number();
-    const double c = number();
-    const std::string text =
-        number_text(a) + "*level + (" + number_text(b) + ")*pump + (" + number_text(c) + ")";
+    const auto number = [&] {
+      return std::to_string(digits(random)) + "e" + std::to_string(exponent(random));
+    };
+    const std::string a = number();
+    const std::string b = number();
+    const std::string c = number();
+    const std::string text = a + "*level + (" + b + ")*pump + (" + c + ")";
     const auto form = affine(text);
     ASSERT_TRUE(form) << "seed " << kSeed << ": " << text;
-    EXPECT_DOUBLE_EQ(form->on_states[0], a) << "seed " << kSeed << ": " << text;
-    EXPECT_DOUBLE_EQ(form->on_inputs[0], b) << "seed " << kSeed << ": " << text;
-    EXPECT_EQ(form->constant, c) << "seed " << kSeed << ": " << text;
+    EXPECT_EQ(form->on_states[0], parse_number(a)) << "seed " << kSeed << ": " << text;
+    EXPECT_EQ(form->on_inputs[0], parse_number(b)) << "seed " << kSeed << ": " << text;
+    EXPECT_EQ(form->constant, parse_number(c)) << "seed " << kSeed << ": " << text;
   }
+}
+
+// A bump of 1 around 200: points of all sizes would miss it, points where the machine is do not.
+TEST(Affine, BendsWhereTheMachineIsAreFound) {
+  const CheckedFormula checked = compile_formula("level + max(0, 1 - abs(level - 200))", kScope);
+  ASSERT_TRUE(checked.formula);
+  const std::array<Region, 2> there{{{200.0, 0.2}, {0.1, 0.2}}};
+  EXPECT_FALSE(find_affine(*checked.formula, there, kInputs));
 }
 
 }  // namespace

@@ -3,6 +3,7 @@
 #include "rig/formula.h"
 
 #include <gtest/gtest.h>
+#include <muParser.h>
 
 #include <atomic>
 #include <cmath>
@@ -122,6 +123,15 @@ TEST(Formula, DoesNotDependOnTheLocale) {
   const std::locale before = std::locale::global(std::locale(std::locale::classic(), new CommaPoint));
   const double value = value_of("1.5 + 1000.25*level", 2, 0, 0);
   std::locale::global(before);
+  EXPECT_DOUBLE_EQ(value, 2002.0);
+}
+
+// muParser keeps one locale for the whole process; somebody else may change it.
+TEST(Formula, DoesNotDependOnOtherParsers) {
+  mu::Parser other;
+  other.SetDecSep('@');
+  const double value = value_of("1.5 + 1000.25*level", 2, 0, 0);
+  other.ResetLocale();
   EXPECT_DOUBLE_EQ(value, 2002.0);
 }
 

@@ -58,9 +58,9 @@ TEST(Json, ThereAndBackIsTheSameRig) { expect_same_rig(to_json(kOrdered), kOrder
 
 TEST(Json, NumbersStayNumbersAndTextStaysText) {
   EXPECT_EQ(
-      to_json("rig: 7\nresponse: 60 s\nconstants: {a: 1.50, b: \"2\"}\nmotion: {level: 0}\nstill: none\n"
+      to_json("rig: 7\nresponse: 60 s\nconstants: {a: 1.50, b: \"2\"}\nmotion: {start: 0}\nstill: none\n"
               "channels: {c: {sd: 0.1, reads: x, range: [0, +6], tag: 12, note: 'a\"b'}, d: {sd: 0.1*x}}\n"),
-      R"({"rig":"7","response":"60 s","constants":{"a":1.5,"b":"2"},"motion":{"level":"0"},"still":"none",)"
+      R"({"rig":"7","response":"60 s","constants":{"a":1.5,"b":"2"},"motion":{"start":"0"},"still":"none",)"
       R"("channels":{"c":{"sd":0.1,"reads":"x","range":[0,6],"tag":"12","note":"a\"b"},)"
       R"("d":{"sd":"0.1*x"}}})");
 }

@@ -155,6 +155,7 @@ TEST(Load, UnitOfAChannelIsThatOfTheStateItReads) {
   EXPECT_EQ(unit("1000*level"), "");
   EXPECT_EQ(unit("level + inflow"), "");
   EXPECT_EQ(unit("level^2"), "");
+  EXPECT_EQ(unit("level + pump"), "");
   EXPECT_EQ(unit("1000*level, unit: mm"), "mm");
 }
 

@@ -105,6 +105,8 @@ constexpr Row kRows[] = {
      "8:3: inputs.pump.range: is missing\n"},
     {"start: 0, sd: 0.003", "start: 1, sd: 0.003",
      "8:29: inputs.pump.start: is 1; must be inside the range\n"},
+    {"start: 0, sd: 0.003", "start: -1, sd: 0.003",
+     "8:29: inputs.pump.start: is -1; must be inside the range\n"},
     {"start: 0, sd: 0.003", "sd: 0.003",
      "8:3: inputs.pump.start: is missing\n"},
     {"sd: 0.003", "sd: -0.003",
