@@ -41,9 +41,9 @@ inline constexpr double kVentLimitM = -0.10;
 
 /// No sensor is at fault in these.
 inline constexpr Upsets kUpsets{.storm_at = at(1, 15),
-                                .rag_from = at(3, 50),
-                                .rag_full = at(4, 10),
-                                .rag_cleared = at(4, 35),
+                                .rag_from = at(7, 4),
+                                .rag_full = at(7, 24),
+                                .rag_cleared = at(8, 0),
                                 .rag_share = 0.4};
 
 /// The script above as events. What follows from it (pumps switching, the weir) is noted as it happens.

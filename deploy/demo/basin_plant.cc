@@ -74,7 +74,7 @@ double Plant::lead_health() const {
   return 1.0 - upsets_.rag_share * std::min(grown, 1.0);
 }
 
-double Plant::turbulence() const { return std::clamp((inflow_ - 0.015) / 0.150, 0.0, 1.0); }
+double Plant::turbulence() const { return std::min(inflow_ / 0.200, 1.0); }
 
 void Plant::step_inflow() {
   const double rain = rain_m3s(time_s_ - upsets_.storm_at);

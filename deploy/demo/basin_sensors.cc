@@ -14,7 +14,7 @@ namespace {
 constexpr double kSonicBiasM = 0.007;
 constexpr double kRadarBiasM = -0.003;
 constexpr double kCellBiasM = 0.011;
-constexpr double kMeterScale = 1.008;
+constexpr double kMeterBiasM3S = 0.0004;
 
 constexpr double kCellHeightM = 0.15;  // above the floor; it reads this much when it hangs in air
 constexpr double kMeterZeroM3S = 0.005;
@@ -38,7 +38,7 @@ double Sonic::foam_m(double time_s) {
 }
 
 std::int64_t Sonic::read(const Plant& plant) {
-  const double noise_m = (0.0035 + 0.009 * plant.turbulence()) * random_.normal();
+  const double noise_m = (0.0033 + 0.0095 * plant.turbulence()) * random_.normal();
   const double level_m = plant.level_m() + kSonicBiasM + noise_m + foam_m(plant.time_s());
   const bool held = kSonicHeld.holds(plant.time_s()) || kGatewayFrozen.holds(plant.time_s());
   if (!held) shown_ = to_counts(level_m, kLevelDecimals);
@@ -47,9 +47,7 @@ std::int64_t Sonic::read(const Plant& plant) {
 
 std::int64_t Radar::read(const Plant& plant) {
   const double keep = std::exp(-kRadarPeriodS / kRadarDampingS);
-  // Damping also averages noise: what leaves it is raw · √((1 − keep) / (1 + keep)).
-  const double shown_sd_m = 0.002 + 0.0045 * plant.turbulence();
-  const double raw_sd_m = shown_sd_m / std::sqrt((1.0 - keep) / (1.0 + keep));
+  const double raw_sd_m = 0.002 + 0.0045 * plant.turbulence();
   const double raw_m = plant.level_m() + kRadarBiasM + raw_sd_m * random_.normal();
   damped_m_ = started_ ? keep * damped_m_ + (1.0 - keep) * raw_m : plant.level_m() + kRadarBiasM;
   started_ = true;
@@ -71,7 +69,7 @@ std::int64_t Cell::read(const Plant& plant) {
 
 std::int64_t Meter::read(const Plant& plant) {
   const double noise_m3s = (0.0008 + 0.015 * plant.inflow_m3s()) * random_.normal();
-  const double flow_m3s = kMeterScale * plant.inflow_m3s() + noise_m3s;
+  const double flow_m3s = plant.inflow_m3s() + kMeterBiasM3S + noise_m3s;
   return flow_m3s < kMeterZeroM3S ? 0 : to_counts(flow_m3s, kFlowDecimals);
 }
 

@@ -11,12 +11,12 @@
 //   its end 1:15          storm: 200 L/s at 1:35, 250 L/s at 2:57, tail to 5:00  no fault 1:30, 1:38    pump
 //   1, then pump 2 as assist                          no fault 1:32 – 1:42   foam grows to 0.22 m, echo jumps
 //   between foam, water   FAULT of sonic 1:42 – 2:07   echo held, until the foam is hosed down FAULT of sonic
-//   2:22 – 2:42   old echo held, trembling by 2 mm; level rises 0.57 m   FAULT of radar
+//   2:22 – 2:42   old echo held, trembling by 2 mm; level rises 0.56 m   FAULT of radar
 //   2:55 – 3:27   the weir overflows by up to 0.12 m3/s                  no sensor's fault
 //   3:36 – 8:00   vent tube blocked, front passes: −25 mm/h to −0.10 m   FAULT of cell
-//   3:50 – 4:35   pump 1 ragged: −40 % over 20 min, cleared at 4:35      no sensor's fault
-//   5:07          both pumps stop at 0.4 m                               no fault
-//   then          dry weather again, one more run of pump 1              no fault
+//   4:58          both pumps stop at 0.4 m                               no fault
+//   6:49 – 7:35   dry weather; pump 1 runs                               no fault
+//   7:04 –        pump 1 ragged: its flow falls by 40 % over 20 min      no sensor's fault
 #include <cerrno>
 #include <charconv>
 #include <cstdint>
