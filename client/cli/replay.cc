@@ -124,11 +124,16 @@ class Replay {
     views_.clear();
     for (const engine::ChannelEstimate& channel : estimate_.channels) views_.push_back(view_of(channel));
     stretches_.add(
-        estimate_.time_ns, views_,
-        [this](int channel) { return timeline::channel_words(*rig_, channel, estimate_); },
+        estimate_.time_ns, views_, [this](int channel) { return words(channel); },
         [this](const Change& change) {
           tell(time_text(change.time_ns, options_.time) + "  " + change.words);
         });
+  }
+
+  /// Words are rare, so that they can have the full estimate.
+  std::string words(int channel) {
+    timeline_.estimate(estimate_.time_ns, engine::Detail::kFull, full_);
+    return timeline::channel_words(*rig_, channel, full_);
   }
 
   /// Words go where the data does not.
@@ -187,6 +192,7 @@ class Replay {
   std::vector<timeline::Outcome> outcomes_;
   std::vector<ChannelView> views_;
   engine::Estimate estimate_;
+  engine::Estimate full_;  // for words
   std::string text_;
 };
 

@@ -16,7 +16,7 @@ namespace steelyard::timeline {
 [[nodiscard]] const char* condition_name(engine::Condition condition);
 
 /// One channel in words: "sonic reads +0.182 ± 0.006 m off, 93 %", "radar repeats its last value, 99 %",
-/// "meter is sound, 100 %, noise 0.012 m3/s (datasheet 0.004)", "cell is silent for 42 s".
+/// "meter is sound, 100 %, noise 0.012 m3/s (datasheet 0.004)", "cell is silent for 42 s, 97 %".
 [[nodiscard]] std::string channel_words(const rig::Rig& rig, int channel, const engine::Estimate& estimate);
 
 /// NAMUR NE 107 status by the most probable condition (the five names, from memory): "good",

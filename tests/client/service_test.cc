@@ -96,11 +96,9 @@ TEST_F(ServiceTest, WatchTellsTheSameWordsAsReplay) {
   EXPECT_EQ(run(folder_, feed(log_)).code, 0);
   const Finished watched = watching->wait();
   EXPECT_EQ(watched.code, 0) << watched.err;
-  const std::string summary = "Stretches in which a channel was not sound:\n  sonic: from 1700000100";
-  EXPECT_TRUE(has(watched.out, summary)) << watched.out;
-  const Finished replayed = replay({"--words", "--out", "/dev/null"});
-  EXPECT_EQ(watched.out.substr(watched.out.find("Stretches")),
-            replayed.out.substr(replayed.out.find("Stretches")));
+  EXPECT_TRUE(has(watched.out, "Stretches in which a channel was not sound:\n  sonic: from 170000010"))
+      << watched.out;
+  EXPECT_EQ(watched.out, replay({"--words", "--out", "/dev/null"}).out);
 }
 
 TEST_F(ServiceTest, WhatWasFedOnceIsTakenOnce) {

@@ -19,12 +19,15 @@ bool starts_character(char c) { return (static_cast<unsigned char>(c) & 0xC0U) !
 
 CsvReader::CsvReader(std::istream& in) : in_(in), chunk_(kChunkBytes) {}
 
+/// Takes what is there and waits only if that is nothing: a log may come from a pipe, a row at a time.
 bool CsvReader::fill() {
   if (!in_.good()) return false;
-  in_.read(chunk_.data(), static_cast<std::streamsize>(chunk_.size()));
+  const bool any = in_.peek() != std::istream::traits_type::eof();
   if (in_.bad()) read_failed_ = true;
+  if (!any) return false;
   chunk_at_ = 0;
-  chunk_end_ = static_cast<std::size_t>(in_.gcount());
+  chunk_end_ =
+      static_cast<std::size_t>(in_.readsome(chunk_.data(), static_cast<std::streamsize>(chunk_.size())));
   bytes_read_ += chunk_end_;
   return chunk_end_ > 0;
 }

@@ -26,9 +26,13 @@ bool kind_has_size(int kind) {
          condition == engine::Condition::kWandering;
 }
 
-/// How long a change must last before it is told, in times of `join`. Between the kinds that differ in the
-/// speed of an offset alone the lead wavers while the evidence gathers: that is no news.
-TimeNs patience(int from, int to) { return kind_has_size(from) && kind_has_size(to) ? 5 : 1; }
+/// How long a change must last before it is told, in fifths of `join`: a person is to hear early that a
+/// channel is no longer sound, but not of every flicker. Between the kinds that differ in the speed of an
+/// offset alone the lead wavers while the evidence gathers: that is no news.
+TimeNs patience_fifths(int from, int to) {
+  if (from == kSoundKind) return 1;
+  return kind_has_size(from) && kind_has_size(to) ? 25 : 5;
+}
 
 double kind_probability(const ChannelView& view, int kind) {
   return kind == kSilentKind ? view.silent : view.probability[static_cast<std::size_t>(kind)];
@@ -78,8 +82,7 @@ void Stretches::tell(TimeNs time_ns, int channel, int kind, const Words& words, 
     one.waiting = kind;
     one.waiting_since_ns = time_ns;
   }
-  const bool at_once = one.told == kSoundKind;
-  if (!at_once && gap(one.waiting_since_ns, time_ns) / patience(one.told, kind) < join_ns_) return;
+  if (gap(one.waiting_since_ns, time_ns) / patience_fifths(one.told, kind) < join_ns_ / 5) return;
   one.told = kind;
   if (on_change) on_change({one.waiting_since_ns, channel, kind, words ? words(channel) : std::string()});
 }

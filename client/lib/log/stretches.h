@@ -7,9 +7,9 @@
 //   for (each moment) stretches.add(time_ns, views, words, on_change);
 //   write(stretches.finish());
 //
-// Chatter is joined: what turns sound for less than `join` counts as one stretch. That a channel is no longer
-// sound is told at once; a change to another condition, or back to sound, when it has lasted for `join` (for
-// five of it between creeping, offset and wandering).
+// Chatter is joined: what turns sound for less than `join` counts as one stretch. That a channel is no longer sound
+// is told when it has lasted for a fifth of `join`; a change to another condition, or back to sound, for all of it
+// (between creeping, offset and wandering for five times as long). The time told is that of the beginning.
 #pragma once
 
 #include <array>
