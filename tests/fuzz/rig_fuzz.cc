@@ -1,6 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
-// Any bytes as a rig file: load() must answer with a rig or with problems, and never throw or abort. A rig that
-// loads must load again from its JSON form, and its formulas must bear any numbers.
+// Any bytes as a rig file: load() must answer with a rig or with problems, and never throw or abort. A rig
+// that loads must load again from its JSON form, and its formulas must bear any numbers.
 #include <cstddef>
 #include <cstdint>
 #include <cstdlib>
