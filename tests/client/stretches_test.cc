@@ -82,9 +82,22 @@ TEST(Stretches, JoinsShortReturnsToSound) {
 }
 
 TEST(Stretches, AFlickerIsAStretchButIsNotTold) {
-  const Told told = follow("sosssssssss");
-  EXPECT_EQ(told.changes, Lines{});
-  EXPECT_EQ(told.stretches.size(), 1U);
+  Stretches stretches(1, 5 * kS);
+  std::size_t changes = 0;
+  const auto count = [&changes](const Change&) { ++changes; };
+  const TimeNs half = kS / 2;
+  for (TimeNs i = 0; i < 30; ++i) {
+    const std::vector<ChannelView> views{view(i == 4 ? 'o' : 's', 0.0)};
+    stretches.add(i * half, views, {}, count);
+  }
+  EXPECT_EQ(changes, 0U);
+  const std::vector<Stretch> all = stretches.finish();
+  ASSERT_EQ(all.size(), 1U);
+  EXPECT_TRUE(all.front().brief);
+  const std::vector<std::string> names{"sonic"};
+  EXPECT_EQ(stretches_text(all, 0, names, names, [](TimeNs) { return std::string(); }),
+            "Stretches in which a channel was not sound:\n"
+            "  sonic: 1 time for less than a fifth of the response time\n");
 }
 
 TEST(Stretches, DoesNotJoinOverALongerSoundTime) {

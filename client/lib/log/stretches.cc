@@ -42,6 +42,19 @@ std::string percent(double probability) {
   return std::to_string(std::lround(std::clamp(probability, 0.0, 1.0) * 100.0)) + " %";
 }
 
+/// "sonic: from 3 to 7, offset, up to +0.300 ± 0.010 m, 90 % at its surest (not sound: 98 %)"
+std::string stretch_line(const Stretch& one, const std::string& name, const std::string& unit,
+                         const std::function<std::string(TimeNs)>& time) {
+  std::string out = name + ": from " + time(one.from_ns) + " to " + time(one.to_ns) +
+                    (one.open ? " (and still)" : "") + ", " + kind_name(one.kind);
+  if (one.has_size) {
+    const std::string size = timeline::rounded(one.size, one.size_sd);
+    out += std::string(", up to ") + (size.starts_with('-') ? "" : "+") + size + " ± " +
+           timeline::rounded(one.size_sd, one.size_sd) + (unit.empty() ? "" : " " + unit);
+  }
+  return out + ", " + percent(one.probability) + " at its surest (not sound: " + percent(one.unsound) + ")";
+}
+
 }  // namespace
 
 const char* kind_name(int kind) {
@@ -134,8 +147,9 @@ void Stretches::close(int channel, bool open) {
       std::max_element(one.kinds.begin(), one.kinds.end(),
                        [](const KindSeen& a, const KindSeen& b) { return a.weight_s < b.weight_s; });
   const int kind = static_cast<int>(most - one.kinds.begin());
+  const bool brief = !open && gap(one.from_ns, one.to_ns) < join_ns_ / 5;
   if (done_.size() < kMost) {
-    done_.push_back({channel, one.from_ns, one.to_ns, open, kind, most->probability, one.unsound,
+    done_.push_back({channel, one.from_ns, one.to_ns, open, brief, kind, most->probability, one.unsound,
                      kind_has_size(kind), most->size, most->size_sd});
   } else {
     ++left_out_;
@@ -161,16 +175,19 @@ std::string stretches_text(const std::vector<Stretch>& stretches, std::uint64_t 
                            const std::function<std::string(TimeNs)>& time) {
   if (stretches.empty()) return "Every channel was sound throughout.\n";
   std::string out = "Stretches in which a channel was not sound:\n";
+  std::vector<int> brief(names.size());
   for (const Stretch& one : stretches) {
     const auto index = static_cast<std::size_t>(one.channel);
-    out += "  " + names[index] + ": from " + time(one.from_ns) + " to " + time(one.to_ns) +
-           (one.open ? " (and still)" : "") + ", " + kind_name(one.kind);
-    if (one.has_size) {
-      const std::string size = timeline::rounded(one.size, one.size_sd);
-      out += ", up to " + std::string(size.starts_with('-') ? "" : "+") + size + " ± " +
-             timeline::rounded(one.size_sd, one.size_sd) + (units[index].empty() ? "" : " " + units[index]);
+    if (one.brief) {
+      ++brief[index];
+    } else {
+      out += "  " + stretch_line(one, names[index], units[index], time) + "\n";
     }
-    out += ", " + percent(one.probability) + " at its surest (not sound: " + percent(one.unsound) + ")\n";
+  }
+  for (std::size_t i = 0; i < names.size(); ++i) {
+    if (brief[i] == 0) continue;
+    out += "  " + names[i] + ": " + std::to_string(brief[i]) + (brief[i] == 1 ? " time" : " times") +
+           " for less than a fifth of the response time\n";
   }
   if (left_out > 0) out += "  … and " + std::to_string(left_out) + " more\n";
   return out;

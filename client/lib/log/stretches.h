@@ -7,9 +7,10 @@
 //   for (each moment) stretches.add(time_ns, views, words, on_change);
 //   write(stretches.finish());
 //
-// Chatter is joined: what turns sound for less than `join` counts as one stretch. That a channel is no longer sound
-// is told when it has lasted for a fifth of `join`; a change to another condition, or back to sound, for all of it
-// (between creeping, offset and wandering for five times as long). The time told is that of the beginning.
+// Chatter is joined: what turns sound for less than `join` counts as one stretch. That a channel is no longer
+// sound is told when it has lasted for a fifth of `join`; a change to another condition, or back to sound,
+// for all of it (between creeping, offset and wandering for five times as long). The time told is that of the
+// beginning.
 #pragma once
 
 #include <array>
@@ -57,6 +58,7 @@ struct Stretch {
   engine::TimeNs from_ns = 0;
   engine::TimeNs to_ns = 0;
   bool open = false;         ///< it still lasted at the last estimate
+  bool brief = false;        ///< over within a fifth of `join`
   int kind = kSoundKind;     ///< which led for most of it, weighted by its probability
   double probability = 0.0;  ///< the highest that this kind had
   double unsound = 0.0;      ///< the highest P(not sound, or silent)
@@ -113,7 +115,8 @@ class Stretches {
   std::uint64_t left_out_ = 0;
 };
 
-/// The summary as a table for people, one line each; `time` writes a time.
+/// The summary for people: a line for each stretch, and one a channel for the number of its brief ones.
+/// `time` writes a time.
 [[nodiscard]] std::string stretches_text(const std::vector<Stretch>& stretches, std::uint64_t left_out,
                                          std::span<const std::string> names,
                                          std::span<const std::string> units,
