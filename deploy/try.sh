@@ -76,33 +76,21 @@ build() {
     fail "the build failed"
 }
 
-# True if somebody listens on a port of this machine.
-listens() { (exec 3<>"/dev/tcp/127.0.0.1/$1") 2>/dev/null; }
-
-# Prints a port on which nobody listens.
-free_port() {
-  local port
-  for port in 7411 $(shuf -i 20000-32000 -n 50); do
-    if ! listens "$port"; then
-      echo "$port"
-      return 0
-    fi
-  done
-  return 1
-}
-
+# The service takes any free port and writes it down once it listens.
 start_service() {
-  port=$(free_port) || fail "found no free port"
-  "$bin/steelyardd" --data "$work/data" --listen "127.0.0.1:$port" --rigs deploy/demo \
+  "$bin/steelyardd" --data "$work/data" --listen 127.0.0.1:0 --port-file "$work/port" --rigs deploy/demo \
     >"$work/service.log" 2>&1 &
   service=$!
   local tries
   for ((tries = 0; tries < 150; ++tries)); do
+    if [[ -s $work/port ]]; then
+      port=$(<"$work/port")
+      return 0
+    fi
     kill -0 "$service" 2>/dev/null || fail "the service ended by itself"
-    if listens "$port"; then return 0; fi
     sleep 0.2
   done
-  fail "the service does not answer on port $port after 30 s"
+  fail "the service does not listen after 30 s"
 }
 
 feed() { "$bin/steelyard" feed --to "127.0.0.1:$port" --rig basin --log "$log" --pace "$1"; }
@@ -123,7 +111,7 @@ show() {
     fail "feeding $log failed"
   fi
   feeder=''
-  sleep 1
+  sleep 2   # what is on its way to the watcher arrives
   kill -TERM "$watcher" 2>/dev/null || true
   local result=0
   wait "$watcher" || result=$?
@@ -151,10 +139,10 @@ start_service
 echo "steelyardd listens on 127.0.0.1:$port with the rigs of deploy/demo"
 step "A storm in a basin: three level sensors, a flow meter, two pumps"
 if [[ $once == yes ]]; then
-  show fast --words
+  show fast --words --every-moment --time rfc3339
 elif [[ -t 1 ]]; then
   show x60
 else
-  show x60 --words
+  show x60 --words --time rfc3339
 fi
 closing
