@@ -23,6 +23,7 @@ bool key_less(const Hypothesis& a, const Hypothesis& b) {
 }
 
 void Collector::merge_equal(Pool& pool) {
+  order_.reserve(static_cast<std::size_t>(pool.capacity()));  // once: a pool never grows beyond
   order_.resize(static_cast<std::size_t>(pool.size()));
   for (std::size_t i = 0; i < order_.size(); ++i) order_[i] = static_cast<int>(i);
   std::sort(order_.begin(), order_.end(), [&](int a, int b) {
@@ -78,6 +79,7 @@ void Collector::keep_heaviest(Pool& pool, int budget) {
 }
 
 const std::vector<int>& Collector::heaviest(const Pool& pool, int count) {
+  order_.reserve(static_cast<std::size_t>(pool.capacity()));
   order_.resize(static_cast<std::size_t>(pool.size()));
   for (std::size_t i = 0; i < order_.size(); ++i) order_[i] = static_cast<int>(i);
   const auto n = std::min(static_cast<std::size_t>(count), order_.size());

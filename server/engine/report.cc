@@ -115,6 +115,7 @@ void report_interval(const Pool& pool, int at, const StateModel& model, StateEst
 struct Relaxation {
   double stays = 1.0;     ///< P(sound after | sound before)
   double recovers = 0.0;  ///< P(sound after | not sound before)
+  int ways = 1;           ///< conditions that share what is no longer sound
 };
 
 Relaxation relax(const ChannelModel& c, const Options& options, double age_s) {
@@ -125,7 +126,7 @@ Relaxation relax(const ChannelModel& c, const Options& options, double age_s) {
   if (!(up + down > 0.0)) return {};
   const double settled = up / (up + down);
   const double fade = std::exp(-(up + down) * age_s);
-  return {settled + (1.0 - settled) * fade, settled * (1.0 - fade)};
+  return {settled + (1.0 - settled) * fade, settled * (1.0 - fade), std::max(ways, 1)};
 }
 
 double silence(const ChannelModel& c, double age_s) {
@@ -207,8 +208,9 @@ void report_channel(const Posterior& e, const Pool& pool, int channel, TimeNs t,
   const double fresh = (1.0 - sound) * r.recovers;
   const double relaxed = sound * r.stays + fresh;
   out.trust = std::clamp(trusted * r.stays + fresh * level({a0, a0}), 0.0, 1.0);
-  const double others = sound < 1.0 ? (1.0 - relaxed) / (1.0 - sound) : 0.0;
-  for (int k = 1; k < kConditions; ++k) out.probability[static_cast<std::size_t>(k)] *= others;
+  for (std::size_t k = 1; k < kConditions; ++k)
+    out.probability[k] = out.probability[k] * (1.0 - r.recovers) +
+                         (options.conditions[k] ? sound * (1.0 - r.stays) / r.ways : 0.0);
   out.probability[0] = relaxed;
   Gamma noise = average_noise(pool, channel);
   if (options.forget) forget(noise, a0, keep);

@@ -17,6 +17,9 @@ struct Case {
   std::vector<double> y;
 };
 
+// What ctest shows of a case; without it the bytes of its pointers.
+void PrintTo(const Case& c, std::ostream* out) { *out << "case " << c.name; }
+
 const Case kCaseA{"A", 2.0, 3.0, 10.0, {9.8, 10.4, 10.1, 9.5, 11.2}};
 const Case kCaseB{"B", 1e-3, 1e-3, 0.0, {0.5, -1.2, 2.0}};
 const Case kCaseC{"C", 2.0, 0.02, 5.0, {5.1, 4.9, 5.05, 4.8, 5.3, 5.0, 4.7, 5.25}};

@@ -1,0 +1,113 @@
+// SPDX-License-Identifier: Apache-2.0
+// Numbers stay finite and within their bounds whatever comes: long and short gaps, readings far away, sds
+// that differ by fifteen orders.
+#include <gtest/gtest.h>
+
+#include "engine/axis.h"
+#include "engine/cases.h"
+
+namespace steelyard::engine {
+namespace {
+
+void expect_sane(Engine& engine, TimeNs t) {
+  Estimate e;
+  engine.estimate(t, Detail::kFull, e);
+  for (const double x : numbers(e)) ASSERT_TRUE(std::isfinite(x));
+  ASSERT_TRUE(std::isfinite(engine.log_evidence()));
+  for (const auto& c : e.channels) {
+    ASSERT_GE(c.trust, 0.0);
+    ASSERT_LE(c.trust, 1.0);
+    double sum = 0.0;
+    for (const double p : c.probability) {
+      ASSERT_GE(p, 0.0);
+      ASSERT_LE(p, 1.0 + 1e-12);
+      sum += p;
+    }
+    ASSERT_NEAR(sum, 1.0, 1e-9);
+    ASSERT_GE(c.silent, 0.0);
+    ASSERT_LE(c.silent, 1.0);
+    ASSERT_GT(c.noise_sd, 0.0);
+  }
+  for (const auto& s : e.states) {
+    ASSERT_GE(s.sd, 0.0);
+    ASSERT_LE(s.interval90.lo, s.interval90.hi);
+  }
+  ASSERT_GE(e.hypotheses, 1);
+}
+
+std::shared_ptr<Model> axis(const std::vector<double>& sds) {
+  auto model = std::make_shared<Model>();
+  model->states = {{"position", "m", 0.0, 10.0, 0.0, {}, AffineForm{{0.0, 1.0}, {}, 0.0}},
+                   {"speed", "m/s", 0.0, 1.0, 0.3, {}, AffineForm{{0.0, 0.0}, {}, 0.0}}};
+  for (const double sd : sds) {
+    ChannelModel c;
+    c.name = "c" + std::to_string(model->channels.size());
+    c.reads = AffineForm{{1.0, 0.0}, {}, 0.0};
+    c.sd = sd;
+    c.bias_sd = model->channels.empty() ? 0.0 : 10.0 * sd;
+    c.lo = -1e10;
+    c.hi = 1e10;
+    c.period_s = 1.0;
+    model->channels.push_back(c);
+  }
+  set_defaults(*model, 1.0);
+  return model;
+}
+
+constexpr std::array<TimeNs, 6> kGapsNs{
+    1'000, 1'000'000, 1'000'000'000, 3'600'000'000'000, 86'400'000'000'000, 30 * 86'400'000'000'000};
+
+void run(const std::vector<double>& sds, std::uint64_t seed) {
+  SCOPED_TRACE("seed " + std::to_string(seed));
+  Engine engine(axis(sds));
+  Random random(seed);
+  TimeNs t = 0;
+  for (int i = 0; i < 300; ++i) {
+    t += kGapsNs[static_cast<std::size_t>(random.uniform() * kGapsNs.size())];
+    for (int j = 0; j < static_cast<int>(sds.size()); ++j) {
+      double value = random.normal() * sds[static_cast<std::size_t>(j)];
+      if (random.uniform() < 0.1) value = random.uniform() < 0.5 ? 1e9 : -1e9;
+      if (random.uniform() < 0.05) value = 1e10;  // the range's end
+      engine.read(t, j, value, Quality::kGood);
+      if (testing::Test::HasFatalFailure()) return;
+    }
+    expect_sane(engine, t);
+    expect_sane(engine, t + kGapsNs[static_cast<std::size_t>(random.uniform() * kGapsNs.size())]);
+    ASSERT_FALSE(testing::Test::HasFatalFailure()) << "at reading " << i;
+  }
+}
+
+TEST(Extremes, GapsFromAMicrosecondToAMonthAndReadingsFarAway) {
+  for (std::uint64_t seed = 1; seed <= 5; ++seed) run({0.01, 0.03, 0.05}, seed);
+}
+
+TEST(Extremes, AnSdOfANanometreBesideAMillionMetres) {
+  for (std::uint64_t seed = 1; seed <= 5; ++seed) run({1e-9, 1e6}, seed);
+}
+
+TEST(Extremes, OneChannelAlone) {
+  for (std::uint64_t seed = 1; seed <= 5; ++seed) run({1.0}, seed);
+}
+
+// A burst of the same time: no gap at all.
+TEST(Extremes, ManyReadingsOfOneMoment) {
+  auto model = axis({0.1, 0.1});
+  for (auto& c : model->channels) c.period_s = 0.0;
+  Engine engine(model);
+  Random random(6);
+  for (int i = 0; i < 500; ++i) engine.read(1'000'000'000, i % 2, 0.1 * random.normal(), Quality::kGood);
+  expect_sane(engine, 1'000'000'000);
+}
+
+// An estimate before any reading is the start.
+TEST(Extremes, NothingReadYet) {
+  Engine engine(axis({0.1}));
+  Estimate e;
+  engine.estimate(5'000'000'000, Detail::kFull, e);
+  EXPECT_EQ(e.states[0].mean, 0.0);
+  EXPECT_NEAR(e.states[0].sd, 10.0, 1e-12);
+  EXPECT_EQ(e.channels[0].age_s, -1.0);
+}
+
+}  // namespace
+}  // namespace steelyard::engine
