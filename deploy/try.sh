@@ -93,30 +93,27 @@ start_service() {
   fail "the service does not listen after 30 s"
 }
 
-feed() { "$bin/steelyard" feed --to "127.0.0.1:$port" --rig basin --log "$log" --pace "$1"; }
-watch() { "$bin/steelyard" watch --from "127.0.0.1:$port" --rig basin "$@"; }
-
 # Feeds in the background and lets people look meanwhile; the watcher ends when the log does.
+# show PACE OPTION...: the options are those of `steelyard watch`.
 show() {
-  local pace="$1"
+  local pace="$1" result=0
   shift
-  watch "$@" &
+  "$bin/steelyard" watch --from "127.0.0.1:$port" --rig basin "$@" &
   watcher=$!
   sleep 1   # so that it sees the first readings, too
-  feed "$pace" 2>"$work/feed.log" &
+  "$bin/steelyard" feed --to "127.0.0.1:$port" --rig basin --log "$log" --pace "$pace" 2>"$work/feed.log" &
   feeder=$!
-  if ! wait "$feeder"; then
-    feeder=''
-    cat "$work/feed.log" >&2
-    fail "feeding $log failed"
-  fi
+  wait "$feeder" || result=$?
   feeder=''
+  if [[ $result -ne 0 ]]; then
+    cat "$work/feed.log" >&2
+    fail "feeding $log ended with $result"
+  fi
   sleep 2   # what is on its way to the watcher arrives
   kill -TERM "$watcher" 2>/dev/null || true
-  local result=0
   wait "$watcher" || result=$?
   watcher=''
-  [[ $result -eq 0 || $result -eq 143 ]] || fail "watching ended with $result"
+  [[ $result -eq 0 ]] || fail "watching ended with $result"
 }
 
 closing() {
