@@ -1,9 +1,10 @@
 // SPDX-License-Identifier: Apache-2.0
 // steelyard_demo_log: writes the logs of this folder. Equal seeds give equal bytes.
 //
-//   steelyard_demo_log [basin] [--seed N] [--events | --truth] > basin.csv
+//   steelyard_demo_log [basin | trolley | cart] [--seed N] [--events | --truth] > basin.csv
 //
-// The basin's eight hours (hours:minutes after the start, which is 06:00 UTC):
+// The trolley's and the cart's timelines stand at the heads of trolley.cc and cart.cc. The basin's eight
+// hours (hours:minutes after the start, which is 06:00 UTC):
 //
 //   0:00          dry weather, 6 L/s, level 1.13 m
 //   0:20 – 0:52   pump 1 empties the basin from 1.2 to 0.4 m             no fault
@@ -26,6 +27,8 @@
 #include <string_view>
 
 #include "basin.h"
+#include "cart.h"
+#include "trolley.h"
 
 namespace {
 
@@ -74,7 +77,9 @@ std::optional<Wish> parse(int count, char** arguments) {
 
 std::optional<Log> make(const Wish& wish) {
   if (wish.scenario == "basin") return steelyard::demo::make_basin_log(wish.seed);
-  std::cerr << "unknown scenario '" << wish.scenario << "'; known is basin\n";
+  if (wish.scenario == "trolley") return steelyard::demo::make_trolley_log(wish.seed);
+  if (wish.scenario == "cart") return steelyard::demo::make_cart_log(wish.seed);
+  std::cerr << "unknown scenario '" << wish.scenario << "'; known are basin, trolley, cart\n";
   return std::nullopt;
 }
 
