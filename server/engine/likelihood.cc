@@ -78,14 +78,13 @@ void Likelihood::move(Hypothesis& h, const Step& step) const {
   }
 }
 
-double Likelihood::repeat_probability(const Hypothesis& h, const Occasion& o) const {
-  const double plain_noise = model_.options.learn_precision
-                                 ? expected_.spec_variance / h.noise[o.channel].mean()
-                                 : expected_.spec_variance;
+// With the noise that the likelihood itself uses, so that the factor of repeats.h corrects just that
+// likelihood.
+double Likelihood::repeat_probability(const Occasion& o, double noise_variance) const {
   Occasion last = o;
   last.value = o.last_value;
   const double e = residual(last, expected_.mean);
-  const double inside = bin_probability(e, std::sqrt(expected_.variance + plain_noise), o.resolution);
+  const double inside = bin_probability(e, std::sqrt(expected_.variance + noise_variance), o.resolution);
   return o.regular * inside + (1.0 - o.regular) * o.resolution / o.span;
 }
 
@@ -129,7 +128,7 @@ Absorbed Likelihood::absorb(Hypothesis& h, const Occasion& o) {
   Absorbed out;
   out.log_likelihood =
       o.regular < 1.0 ? log_sum(log_inside, std::log((1.0 - o.regular) * o.elsewhere)) : log_inside;
-  if (!o.first) out.repeat_probability = repeat_probability(h, o);
+  if (!o.first) out.repeat_probability = repeat_probability(o, r);
   Step step;
   step.weight = std::exp(log_inside - out.log_likelihood);
   step.shift = e;

@@ -56,7 +56,7 @@ class Likelihood {
   double learn(Gamma& g, double s, double r, double spec, double weight,
                const SecondMoment& second_moment) const;
   Absorbed absorb_censored(Hypothesis& h, const Occasion& occasion, double r);
-  double repeat_probability(const Hypothesis& h, const Occasion& occasion) const;
+  [[nodiscard]] double repeat_probability(const Occasion& occasion, double noise_variance) const;
   void move(Hypothesis& h, const Step& step) const;
   [[nodiscard]] double influence(const Step& step) const;
 

@@ -23,14 +23,24 @@ RepeatRate::RepeatRate(const ChannelModel& channel, double response_s)
   // Two readings of one value with noise sd fall into the same bin with density 1/(sd·√(4π)).
   const double by_chance = effective_resolution(channel) / (channel.sd * std::sqrt(4.0 * std::numbers::pi));
   const double rate = std::min(0.9, by_chance);
-  prior_repeats_ = repeats_ = kPriorReadings * rate;
-  prior_others_ = others_ = kPriorReadings * (1.0 - rate);
+  prior_ = {kPriorReadings * rate, kPriorReadings * (1.0 - rate)};
+  after_.fill(prior_);
+}
+
+double RepeatRate::mean() const {
+  const Beta& now = after_[last_repeated_ ? 1 : 0];
+  return now.repeats / (now.repeats + now.others);
 }
 
 void RepeatRate::learn(bool repeated, double weight, double gap_s) {
   const double keep = std::exp2(-gap_s / memory_s_);
-  repeats_ = prior_repeats_ + keep * (repeats_ - prior_repeats_) + (repeated ? weight : 0.0);
-  others_ = prior_others_ + keep * (others_ - prior_others_) + (repeated ? 0.0 : weight);
+  for (Beta& b : after_) {
+    b.repeats = prior_.repeats + keep * (b.repeats - prior_.repeats);
+    b.others = prior_.others + keep * (b.others - prior_.others);
+  }
+  Beta& now = after_[last_repeated_ ? 1 : 0];
+  (repeated ? now.repeats : now.others) += weight;
+  last_repeated_ = repeated;
 }
 
 double repeat_factor(bool repeated, double learned_rate, double explained_rate) {

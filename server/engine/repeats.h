@@ -3,6 +3,8 @@
 // and is not frozen.
 #pragma once
 
+#include <array>
+
 #include "engine/model.h"
 
 namespace steelyard::engine {
@@ -10,22 +12,27 @@ namespace steelyard::engine {
 /// Step of the channel's values, for the probability of an exact repeat.
 [[nodiscard]] double effective_resolution(const ChannelModel& channel);
 
-/// A Beta posterior with long memory.
+/// A Beta posterior with long memory for each of two cases, because repeats come in runs: slow quantities and
+/// damped sensors repeat more often after a repeat than after a change.
 class RepeatRate {
  public:
   RepeatRate() = default;
   RepeatRate(const ChannelModel& channel, double response_s);
 
-  [[nodiscard]] double mean() const { return repeats_ / (repeats_ + others_); }
+  /// P(the next reading repeats), given what the last one did.
+  [[nodiscard]] double mean() const;
   /// weight: probability that the reading came from a channel that is not frozen, so a freeze teaches
   /// nothing.
   void learn(bool repeated, double weight, double gap_s);
 
  private:
-  double prior_repeats_ = 1.0;
-  double prior_others_ = 1.0;
-  double repeats_ = 1.0;
-  double others_ = 1.0;
+  struct Beta {
+    double repeats = 1.0;
+    double others = 1.0;
+  };
+  Beta prior_;
+  std::array<Beta, 2> after_;  ///< after a change, after a repeat
+  bool last_repeated_ = false;
   double memory_s_ = 1.0;
 };
 
