@@ -275,7 +275,7 @@ void add_check(CLI::App& app, Run& run) {
       "check",
       "Say what a rig means: linear or not, what each channel shows, what is lost without it, the defaults");
   const auto path = std::make_shared<std::string>();
-  command->add_option("RIG", *path, "Rig file (YAML)")->required();
+  command->add_option("RIG", *path, "Rig file (YAML)")->required()->type_name("FILE");
   command->callback([path, &run] { run = [path] { return check(*path); }; });
 }
 

@@ -159,14 +159,25 @@ int feed(Options options) {
 void add_feed(CLI::App& app, Run& run) {
   CLI::App* const command = app.add_subcommand("feed", "Send a log to a service");
   const auto options = std::make_shared<Options>();
-  command->add_option("--to", options->to, "Address of the service, HOST:PORT")->required();
-  command->add_option("--rig", options->rig, "Name of a rig that the service has")->required();
-  command->add_option("--log", options->log, "Log (CSV, long or wide; - is stdin)")->required();
-  command->add_option("--pace", options->pace,
-                      "real: at the pace of the log; fast: as fast as it is taken (default); xN: N times the "
-                      "pace of the log");
-  command->add_option("--source", options->source,
-                      "Who feeds; the file's name and a hash of its first 4 KiB if not given");
+  command->add_option("--to", options->to, "Address of the service, HOST:PORT")
+      ->required()
+      ->type_name("HOST:PORT");
+  command->add_option("--rig", options->rig, "Name of a rig that the service has")
+      ->required()
+      ->type_name("NAME");
+  command->add_option("--log", options->log, "Log (CSV, long or wide; - is stdin)")
+      ->required()
+      ->type_name("FILE");
+  command
+      ->add_option(
+          "--pace", options->pace,
+          "real: at the pace of the log; fast: as fast as it is taken (default); xN: N times the pace "
+          "of the log")
+      ->type_name("PACE");
+  command
+      ->add_option("--source", options->source,
+                   "Who feeds; the file's name and a hash of its first 4 KiB if not given")
+      ->type_name("NAME");
   command->footer(
       "Connects for up to 30 s and after a break goes on by itself; run again, it goes on where it ended. "
       "Exit 0: all\n"

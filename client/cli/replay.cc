@@ -218,19 +218,24 @@ void add_replay(CLI::App& app, Run& run) {
   CLI::App* const command =
       app.add_subcommand("replay", "Run a log through the engine and write the estimates as CSV");
   const auto options = std::make_shared<Options>();
-  command->add_option("--rig", options->rig, "Rig file (YAML)")->required();
-  command->add_option("--log", options->log, "Log (CSV, long or wide; - is stdin)")->required();
-  command->add_option("--out", options->out, "File for the estimates; stdout if not given");
-  command->add_option("--channels", options->channels,
-                      "File for one row per time and channel: trust, probabilities, …");
+  command->add_option("--rig", options->rig, "Rig file (YAML)")->required()->type_name("FILE");
+  command->add_option("--log", options->log, "Log (CSV, long or wide; - is stdin)")
+      ->required()
+      ->type_name("FILE");
+  command->add_option("--out", options->out, "File for the estimates; stdout if not given")
+      ->type_name("FILE");
+  command
+      ->add_option("--channels", options->channels,
+                   "File for one row per time and channel: trust, probabilities, …")
+      ->type_name("FILE");
   command->add_flag(
       "--words", options->words,
       "Tell each change of a channel and the stretches in which it was not sound, in words, on stderr "
       "(on stdout if --out is given)");
   add_time_option(*command, options->time);
   command->add_flag("--settled", options->settled, "Not there yet");
-  command->add_option("--report", options->report, "Not there yet");
-  command->add_option("--episodes", options->episodes, "Not there yet");
+  command->add_option("--report", options->report, "Not there yet")->type_name("FILE");
+  command->add_option("--episodes", options->episodes, "Not there yet")->type_name("FILE");
   command->footer(
       "A cell of the log that cannot be used refuses its own reading alone: the first 10 are shown, all are "
       "counted,\n"

@@ -50,6 +50,9 @@ std::size_t place(double value, double lo, double hi) {
   return static_cast<std::size_t>(std::lround(share * static_cast<double>(kBarWidth - 1)));
 }
 
+/// "1" is the unit of what has none.
+std::string unit_text(const std::string& unit) { return unit.empty() || unit == "1" ? "" : " " + unit; }
+
 std::string age_text(double age_s) {
   if (age_s < 0.0) return "never";
   if (age_s < 99.95) return timeline::rounded(age_s, 0.3) + " s";
@@ -79,6 +82,8 @@ std::vector<std::string> Screen::draw(const Picture& picture, ScreenSize size) {
   for (std::size_t i = 0; i < picture.names.channels.size(); ++i) {
     lines.push_back(channel_line(picture, i, channel_width, size.columns));
   }
+  lines.emplace_back();
+  lines.push_back(cut("Advice only: trips and interlocks must not depend on it.", size.columns));
   lines.front() = cut(lines.front(), size.columns);
   if (lines.size() > size.rows) lines.resize(size.rows);
   return lines;
@@ -97,7 +102,7 @@ std::string Screen::state_line(const Picture& picture, std::size_t state, std::s
   for (std::size_t i = place(low, span.lo, span.hi); i <= place(high, span.lo, span.hi); ++i) bar[i] = '=';
   bar[place(told.mean, span.lo, span.hi)] = '|';
   const std::string number = timeline::rounded(told.mean, told.sd) + " ± " +
-                             timeline::rounded(told.sd, told.sd) + " " + picture.state_units[state];
+                             timeline::rounded(told.sd, told.sd) + unit_text(picture.state_units[state]);
   const double step = std::max((span.hi - span.lo) / 10.0, 0.0);
   return padded(picture.names.states[state], name_width) + "  " + padded(number, 24) + " [" + bar + "] " +
          timeline::rounded(span.lo, step) + " to " + timeline::rounded(span.hi, step) +

@@ -1,6 +1,5 @@
 // SPDX-License-Identifier: Apache-2.0
 // The option --time, which several commands have.
-#include <map>
 #include <string>
 
 #include "cli/commands.h"
@@ -8,12 +7,14 @@
 namespace steelyard::client {
 
 void add_time_option(CLI::App& command, TimeStyle& style) {
-  static const std::map<std::string, TimeStyle> kStyles{{"seconds", TimeStyle::kSeconds},
-                                                        {"rfc3339", TimeStyle::kRfc3339}};
   command
-      .add_option("--time", style,
-                  "How times are written: seconds (since 1970, the default) or rfc3339 (UTC)")
-      ->transform(CLI::CheckedTransformer(kStyles))
+      .add_option_function<std::string>(
+          "--time",
+          [&style](const std::string& text) {
+            style = text == "rfc3339" ? TimeStyle::kRfc3339 : TimeStyle::kSeconds;
+          },
+          "How times are written: seconds (since 1970, the default) or rfc3339 (UTC)")
+      ->check(CLI::IsMember({"seconds", "rfc3339"}))
       ->type_name("STYLE");
 }
 

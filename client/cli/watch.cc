@@ -273,8 +273,12 @@ void add_watch(CLI::App& app, Run& run) {
   CLI::App* const command =
       app.add_subcommand("watch", "Show the live estimate: a screen in a terminal, CSV in a pipe");
   const auto options = std::make_shared<Options>();
-  command->add_option("--from", options->from, "Address of the service, HOST:PORT")->required();
-  command->add_option("--rig", options->rig, "Name of a rig that the service has")->required();
+  command->add_option("--from", options->from, "Address of the service, HOST:PORT")
+      ->required()
+      ->type_name("HOST:PORT");
+  command->add_option("--rig", options->rig, "Name of a rig that the service has")
+      ->required()
+      ->type_name("NAME");
   command->add_flag("--once", options->once, "Show one picture and end");
   command->add_flag(
       "--words", options->words,

@@ -55,8 +55,9 @@ std::string two_digits(double value) {
   return text;
 }
 
+/// "1" is the unit of what has none.
 std::string with_unit(const std::string& number, const std::string& unit) {
-  return unit.empty() ? number : number + " " + unit;
+  return unit.empty() || unit == "1" ? number : number + " " + unit;
 }
 
 std::string percent(double probability) {

@@ -299,6 +299,13 @@ TEST(LogReader, ANeverClosedQuoteInALongFileCostsOneRow) {
   EXPECT_EQ(result.readings.size(), kRows);
 }
 
+TEST(CsvReader, ANeverClosedQuoteIsGivenUpBeforeTheFileEnds) {
+  std::istringstream stream("\"a\n" + std::string(8'000'000, '\n'));
+  CsvReader csv(stream);
+  EXPECT_EQ(csv.next(), CsvReader::Got::kWrong);
+  EXPECT_GT(csv.bytes_read(), kMaxRecordBytes);
+}
+
 TEST(LogReader, AcceptsALineOfJustUnder1MiB) {
   const std::string value = "2." + std::string((1U << 20U) - 10, '0');
   const Read result = read(kLong + "1,sonic," + value + "\n");

@@ -139,7 +139,7 @@ TEST(PictureOf, AnEmptyMessageIsNoTrouble) {
 TEST(Screen, ShowsBarsAndWordsAndFits) {
   Screen screen(false);
   const std::vector<std::string> lines = screen.draw(picture(), {120, 24});
-  ASSERT_EQ(lines.size(), 6U);
+  ASSERT_EQ(lines.size(), 8U);
   EXPECT_EQ(lines[0], "1970-01-01T00:00:01.5Z   estimate good");
   EXPECT_TRUE(lines[2].starts_with("level  2.034 ± 0.004 m")) << lines[2];
   EXPECT_NE(lines[2].find("[==============="), std::string::npos) << lines[2];
@@ -147,6 +147,7 @@ TEST(Screen, ShowsBarsAndWordsAndFits) {
             "sonic  trust 0.75 [###############.....]  1.5 s   sonic reads +0.182 ± 0.006 m off, 90 %");
   EXPECT_EQ(lines[5],
             "radar  trust 0.75 [###############.....]  never   radar reads +0.182 ± 0.006 m off, 90 %");
+  EXPECT_EQ(lines[7], "Advice only: trips and interlocks must not depend on it.");
   for (const std::string& line : Screen(false).draw(picture(), {20, 24})) {
     EXPECT_LE(std::count_if(line.begin(), line.end(), [](char c) { return (c & 0xC0) != 0x80; }), 20) << line;
   }

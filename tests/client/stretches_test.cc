@@ -108,6 +108,11 @@ TEST(Stretches, DoesNotJoinOverALongerSoundTime) {
   EXPECT_EQ(told.stretches[1].from_ns, 9 * kS);
 }
 
+TEST(Stretches, JoinsUpToJustBelowTheJoinTime) {
+  EXPECT_EQ(follow("sosssso").stretches.size(), 1U);
+  EXPECT_EQ(follow("sossssso").stretches.size(), 2U);
+}
+
 TEST(Stretches, OneStillOpenEndsWithTheLastEstimate) {
   const Told told = follow("sssff");
   ASSERT_EQ(told.stretches.size(), 1U);

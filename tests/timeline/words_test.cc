@@ -58,6 +58,15 @@ TEST(ChannelWords, ANegativeOffsetKeepsItsSign) {
   EXPECT_EQ(words(estimate), "sonic reads -0.182 ± 0.006 m off, 93 %");
 }
 
+TEST(ChannelWords, AUnitOf1IsNotWritten) {
+  auto model = std::make_shared<engine::Model>(*make_rig().model);
+  model->channels[0].unit = "1";
+  rig::Rig rig;
+  rig.model = model;
+  EXPECT_EQ(channel_words(rig, 0, estimate_with(Condition::kOffset, 0.93)),
+            "sonic reads +0.182 ± 0.006 off, 93 %");
+}
+
 TEST(ChannelWords, TellNoiseWhereItIsAboveTheDatasheet) {
   engine::Estimate estimate = estimate_with(Condition::kSound, 1.0);
   estimate.channels[0].noise_sd = 0.0123;

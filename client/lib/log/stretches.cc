@@ -50,7 +50,7 @@ std::string stretch_line(const Stretch& one, const std::string& name, const std:
   if (one.has_size) {
     const std::string size = timeline::rounded(one.size, one.size_sd);
     out += std::string(", up to ") + (size.starts_with('-') ? "" : "+") + size + " ± " +
-           timeline::rounded(one.size_sd, one.size_sd) + (unit.empty() ? "" : " " + unit);
+           timeline::rounded(one.size_sd, one.size_sd) + (unit.empty() || unit == "1" ? "" : " " + unit);
   }
   return out + ", " + percent(one.probability) + " at its surest (not sound: " + percent(one.unsound) + ")";
 }
