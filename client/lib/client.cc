@@ -9,6 +9,8 @@
 #include <algorithm>
 #include <utility>
 
+#include "lib/clock.h"
+
 namespace steelyard::client {
 namespace {
 
@@ -31,7 +33,7 @@ std::shared_ptr<grpc::Channel> make_channel(const std::string& address) {
 }
 
 void set_deadline(grpc::ClientContext& context, std::chrono::milliseconds call) {
-  context.set_deadline(std::chrono::system_clock::now() + call);
+  context.set_deadline(wall_now() + call);
 }
 
 }  // namespace
@@ -43,10 +45,10 @@ Client::Client(const std::string& address, Patience patience)
       patience_(patience) {}
 
 grpc::Status Client::connect(std::stop_token stop) {
-  const auto give_up = std::chrono::steady_clock::now() + patience_.connect;
-  while (!channel_->WaitForConnected(std::chrono::system_clock::now() + kPoll)) {
+  const auto give_up = steady_now() + patience_.connect;
+  while (!channel_->WaitForConnected(wall_now() + kPoll)) {
     if (stop.stop_requested()) return {grpc::StatusCode::CANCELLED, "connecting was cancelled"};
-    if (std::chrono::steady_clock::now() >= give_up) {
+    if (steady_now() >= give_up) {
       return {grpc::StatusCode::UNAVAILABLE, "no service answers at " + address_};
     }
   }

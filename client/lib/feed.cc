@@ -12,11 +12,12 @@
 #include <thread>
 #include <utility>
 
+#include "lib/clock.h"
+
 namespace steelyard::client {
 namespace {
 
 using Stream = grpc::ClientReaderWriter<v1::FeedRequest, v1::FeedResponse>;
-using SteadyClock = std::chrono::steady_clock;
 
 constexpr std::size_t kMostRefusalsHeld = 100;
 constexpr std::chrono::milliseconds kFirstBackOff{100};
@@ -61,7 +62,7 @@ class Feed::Impl {
 
  private:
   /// One connection: opening sent, answer awaited.
-  grpc::Status dial(SteadyClock::time_point give_up);
+  grpc::Status dial(SteadyTime give_up);
   /// Ends the connection, if there is one.
   void hang_up();
   /// Connects, as often as it takes while the patience lasts, and sends what is held.
@@ -75,7 +76,7 @@ class Feed::Impl {
   void read_answers();
   void take_answer(v1::FeedResponse& answer);
   void drop_taken();  // mutex held
-  grpc::Status wait_before_retry(std::chrono::milliseconds& back_off, SteadyClock::time_point give_up);
+  grpc::Status wait_before_retry(std::chrono::milliseconds& back_off, SteadyTime give_up);
 
   const std::shared_ptr<v1::Steelyard::Stub> stub_;
   const FeedOptions options_;
@@ -99,7 +100,7 @@ class Feed::Impl {
   std::thread reader_;
 };
 
-grpc::Status Feed::Impl::dial(SteadyClock::time_point give_up) {
+grpc::Status Feed::Impl::dial(SteadyTime give_up) {
   hang_up();
   auto context = std::make_shared<grpc::ClientContext>();
   {
@@ -181,10 +182,9 @@ void Feed::Impl::drop_taken() {
   }
 }
 
-grpc::Status Feed::Impl::wait_before_retry(std::chrono::milliseconds& back_off,
-                                           SteadyClock::time_point give_up) {
+grpc::Status Feed::Impl::wait_before_retry(std::chrono::milliseconds& back_off, SteadyTime give_up) {
   std::unique_lock lock(mutex_);
-  const auto until = std::min(SteadyClock::now() + back_off, give_up);
+  const auto until = std::min(steady_now() + back_off, give_up);
   changed_.wait_until(lock, until, [&] { return cancelled_; });
   back_off = std::min(2 * back_off, kLongestBackOff);
   return cancelled_ ? grpc::Status(grpc::StatusCode::CANCELLED, "the feed was cancelled") : grpc::Status::OK;
@@ -212,7 +212,7 @@ grpc::Status Feed::Impl::wait_for_end() {
 }
 
 grpc::Status Feed::Impl::connect_and_resend() {
-  auto give_up = SteadyClock::now() + patience_;
+  auto give_up = steady_now() + patience_;
   auto back_off = kFirstBackOff;
   std::uint64_t taken = progress().taken;
   for (;;) {
@@ -222,9 +222,9 @@ grpc::Status Feed::Impl::connect_and_resend() {
     if (!is_break(status)) return status;
     if (const std::uint64_t now_taken = progress().taken; now_taken > taken) {  // it gets on, break by break
       taken = now_taken;
-      give_up = SteadyClock::now() + patience_;
+      give_up = steady_now() + patience_;
     }
-    if (SteadyClock::now() >= give_up) return status;
+    if (steady_now() >= give_up) return status;
     if (auto waited = wait_before_retry(back_off, give_up); !waited.ok()) return waited;
   }
 }

@@ -11,4 +11,8 @@ engine::TimeNs SystemClock::now_ns() const {
 
 SteadyTime SystemClock::steady() const { return std::chrono::steady_clock::now(); }
 
+std::chrono::system_clock::time_point deadline_after(std::chrono::milliseconds wait) {
+  return std::chrono::system_clock::now() + wait;
+}
+
 }  // namespace steelyard::service

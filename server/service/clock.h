@@ -28,4 +28,7 @@ class SystemClock final : public Clock {
   [[nodiscard]] SteadyTime steady() const override;
 };
 
+/// For deadlines that gRPC wants as wall-clock time.
+[[nodiscard]] std::chrono::system_clock::time_point deadline_after(std::chrono::milliseconds wait);
+
 }  // namespace steelyard::service

@@ -167,9 +167,11 @@ void FeedStream::OnCancel() {
 }
 
 void FeedStream::OnDone() {
-  // Behind the readings that are still in the mailbox, which are run.
-  if (host_) (void)host_->post({shared_from_this(), CloseFeed{}});
   const auto last = std::move(self_);
+  // The mailbox may hold this feed for ever if the service ends: the feed must not hold its rig then.
+  const auto host = std::move(host_);
+  // Behind the readings that are still in the mailbox, which are run.
+  if (host) (void)host->post({last, CloseFeed{}});
 }
 
 }  // namespace steelyard::service

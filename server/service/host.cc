@@ -106,16 +106,18 @@ void Host::close_watch(const std::shared_ptr<WatchSession>& session) {
 Job::Next Host::run() {
   try {
     return run_piece();
-  } catch (
-      const std::exception& error) {  // a defect of ours, which must not end the process or the other rigs
-    spdlog::critical("rig {}: {}; it takes no more readings", machine_.rig().name, error.what());
-    const auto status =
-        make_status(Error::kInternal, fmt::format("rig {}: {}", machine_.rig().name, error.what()));
-    ended_ = status;
-    feeds_.end_all(status);
-    watches_.end_all(status);
+  } catch (const std::exception& error) {
+    fail(error);
     return {true, std::nullopt};
   }
+}
+
+void Host::fail(const std::exception& error) {
+  const std::string what = fmt::format("rig {}: {}", machine_.rig().name, error.what());
+  spdlog::critical("{}; it takes no more readings", what);
+  ended_ = make_status(Error::kInternal, what);
+  feeds_.end_all(*ended_);
+  watches_.end_all(*ended_);
 }
 
 Job::Next Host::run_piece() {
@@ -144,7 +146,13 @@ void Host::run_urgent() {
     const std::lock_guard lock(mutex_);
     urgent.swap(urgent_);
   }
-  for (const Urgent& task : urgent) task();
+  for (const Urgent& task : urgent) {
+    try {
+      task();
+    } catch (const std::exception& error) {  // the tasks behind it must run all the same
+      fail(error);
+    }
+  }
 }
 
 std::vector<std::shared_ptr<FeedSession>> Host::take_waiting() {

@@ -8,6 +8,7 @@
 #pragma once
 
 #include <deque>
+#include <exception>
 #include <functional>
 #include <memory>
 #include <mutex>
@@ -42,7 +43,7 @@ class Host final : public Job, public std::enable_shared_from_this<Host> {
   /// Any thread. False: the mailbox is full; read no more until the feed's room() is called.
   [[nodiscard]] bool post(FeedMessage message);
 
-  /// Any thread. The machine is null if the rig has ended; then `ended` says why.
+  /// Answers whatever happens and throws nothing. The machine is null if the rig has ended; `ended` says why.
   using Question = std::function<void(Machine* machine, const grpc::Status& ended)>;
   /// Any thread. Asks between two chunks of readings, in order; kLimit if too many wait.
   [[nodiscard]] grpc::Status ask(Question question);
@@ -63,6 +64,8 @@ class Host final : public Job, public std::enable_shared_from_this<Host> {
 
   Next run() override;
   [[nodiscard]] Next run_piece();
+  /// After a defect of ours, which must end neither the process nor the other rigs.
+  void fail(const std::exception& error);
   void push_urgent(Urgent urgent);
   void run_urgent();
   /// Takes the next message from the mailbox; false if there is none.

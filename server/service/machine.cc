@@ -38,7 +38,7 @@ Picture Machine::at(engine::TimeNs time_ns) {
   picture.revision = revision_;
   picture.started = started();
   picture.clock_ns = clock_ns();
-  picture.behind_ns = clock_.now_ns() - time_ns;
+  picture.behind_ns = picture.started ? clock_.now_ns() - time_ns : 0;
   picture.at_horizon = started() && since_newest_ns() >= horizon_ns();
   return picture;
 }

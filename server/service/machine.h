@@ -21,7 +21,7 @@ struct Picture {
   std::uint64_t revision = 0;
   engine::Estimate estimate;
   engine::TimeNs clock_ns = 0;   ///< the rig's; 0 while !started
-  engine::TimeNs behind_ns = 0;  ///< the service's clock minus the estimate's time
+  engine::TimeNs behind_ns = 0;  ///< the service's clock minus the estimate's time; 0 while !started
   bool started = false;
   bool at_horizon = false;  ///< the newest reading is one horizon old or more
 };

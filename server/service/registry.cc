@@ -108,10 +108,11 @@ void Registry::put_new(Revision revision, PutResult& result, bool dry_run) {
   result.change = all_new(revision.message);
   result.revision = revision.number = 1;
   if (dry_run) return;
-  Entry& entry = rigs_[result.name];
+  Entry entry;
   entry.host = std::make_shared<Host>(workers_.next(), clock_, limits_, revision.rig, 1);
   spdlog::info("rig {}: put by \"{}\", reason \"{}\"", result.name, revision.author, revision.reason);
   entry.revisions.push_back(std::move(revision));
+  rigs_.emplace(result.name, std::move(entry));
 }
 
 void Registry::put_again(Entry& entry, Revision revision, PutResult& result, bool dry_run) {

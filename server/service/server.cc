@@ -10,6 +10,7 @@
 
 #include <algorithm>
 #include <charconv>
+#include <exception>
 #include <fstream>
 #include <sstream>
 #include <vector>
@@ -18,6 +19,8 @@ namespace steelyard::service {
 namespace {
 
 constexpr int kLargestMessageBytes = 4 << 20;
+// Of one connection; further calls wait at the caller's side.
+constexpr int kMostStreams = 4096;
 // A source whose machine has lost power says nothing; ask it.
 constexpr int kKeepaliveMs = 30'000;
 constexpr int kKeepaliveTimeoutMs = 10'000;
@@ -84,7 +87,14 @@ int Server::put_directory(const std::filesystem::path& directory) {
   if (error) spdlog::error("{}: {}", directory.string(), error.message());
   std::sort(files.begin(), files.end());
   int wrong = error ? 1 : 0;
-  for (const auto& file : files) put_file(file, wrong);
+  for (const auto& file : files) {
+    try {
+      put_file(file, wrong);
+    } catch (const std::exception& failure) {
+      spdlog::error("{}: {}", file.string(), failure.what());
+      ++wrong;
+    }
+  }
   return wrong;
 }
 
@@ -107,7 +117,7 @@ void Server::shut_down() {
   if (!server_) return;
   server_->GetHealthCheckService()->SetServingStatus(false);
   registry_.stop();
-  server_->Shutdown(std::chrono::system_clock::now() + options_.limits.shutdown);
+  server_->Shutdown(deadline_after(options_.limits.shutdown));
   server_.reset();
 }
 

@@ -91,7 +91,8 @@ grpc::Status check_time(const Machine& machine, std::int64_t time_ns) {
                   first, last));
 }
 
-grpc::Status estimate(Machine& machine, const v1::EstimateRequest& request, v1::EstimateResponse& response) {
+grpc::Status estimate_or_throw(Machine& machine, const v1::EstimateRequest& request,
+                               v1::EstimateResponse& response) {
   if (!request.has_time_ns()) {
     fill_moment(machine.at_clock(), *response.mutable_moment());
     return grpc::Status::OK;
@@ -99,6 +100,14 @@ grpc::Status estimate(Machine& machine, const v1::EstimateRequest& request, v1::
   if (auto status = check_time(machine, request.time_ns()); !status.ok()) return status;
   fill_moment(machine.at(request.time_ns()), *response.mutable_moment());
   return grpc::Status::OK;
+}
+
+grpc::Status estimate(Machine& machine, const v1::EstimateRequest& request, v1::EstimateResponse& response) {
+  try {
+    return estimate_or_throw(machine, request, response);
+  } catch (const std::exception& error) {  // the call must be answered whatever happens
+    return make_status(Error::kInternal, error.what());
+  }
 }
 
 grpc::ServerUnaryReactor* finish(grpc::CallbackServerContext* context, const grpc::Status& status) {

@@ -132,8 +132,9 @@ void WatchStream::OnCancel() {
 }
 
 void WatchStream::OnDone() {
-  if (host_) host_->close_watch(shared_from_this());
   const auto last = std::move(self_);
+  const auto host = std::move(host_);  // as in FeedStream::OnDone
+  if (host) host->close_watch(last);
 }
 
 }  // namespace steelyard::service

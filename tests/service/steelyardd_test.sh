@@ -54,7 +54,8 @@ start --rigs "$work/rigs" --log json
 [[ -d $work/new/data ]] || fail "--data was not created"
 expect 1 'in use' --data "$work/d" --listen "127.0.0.1:$port"
 stop TERM
-grep -q '"level":"error","message":".*wrong.yaml:' "$work/log" || fail "no problem of wrong.yaml in: $(cat "$work/log")"
+grep -q '"level":"error","message":".*wrong.yaml:' "$work/log" ||
+  fail "no problem of wrong.yaml in: $(cat "$work/log")"
 while read -r line; do
   [[ $line == '{"time":"'*'","level":"'*'","message":"'*'"}' ]] || fail "not a JSON line: $line"
 done <"$work/log"
