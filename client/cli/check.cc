@@ -165,7 +165,7 @@ class Report {
     return text;
   }
 
-  /// A state counts as shown if it is so at the start state or near it.
+  /// A state counts as shown if it is so at the start or near it.
   std::vector<bool> shown_by(const std::vector<int>& channels) const {
     std::vector<bool> shown = at_start_.shown_states(channels);
     const std::vector<bool> near = near_start_.shown_states(channels);
@@ -179,7 +179,7 @@ class Report {
     std::vector<std::string> names;
     for (std::size_t i = 0; i < somewhere.size(); ++i) {
       if (!somewhere[i]) continue;
-      names.push_back(model_.states[i].name + (at_start[i] ? "" : " (away from the start state)"));
+      names.push_back(model_.states[i].name + (at_start[i] ? "" : " (away from the start)"));
     }
     const auto rank =
         std::max(at_start_.shown_space(channels).rows(), near_start_.shown_space(channels).rows());

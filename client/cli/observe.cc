@@ -66,9 +66,8 @@ bool extend(MatrixXd& space, const RowVectorXd& row) {
 
 }  // namespace
 
-Linearised::Linearised(const engine::Model& model, const std::vector<double>& states) {
-  std::vector<double> inputs;
-  for (const engine::InputModel& input : model.inputs) inputs.push_back(input.start);
+Linearised::Linearised(const engine::Model& model, const Point& point) {
+  const auto& [states, inputs] = point;
   const auto n = static_cast<Index>(states.size());
   motion_ = MatrixXd::Zero(n, n);
   for (Index i = 0; i < n; ++i) {
@@ -110,20 +109,25 @@ bool Linearised::foretold(int channel, const std::vector<int>& by) const {
   return row.norm() > 0.0 && beyond(shown_space(by), row).norm() < 1e-4;
 }
 
-std::vector<double> start_of(const engine::Model& model) {
-  std::vector<double> states;
-  for (const engine::StateModel& state : model.states) states.push_back(state.start);
-  return states;
+Point start_of(const engine::Model& model) {
+  Point point;
+  for (const engine::StateModel& state : model.states) point.states.push_back(state.start);
+  for (const engine::InputModel& input : model.inputs) point.inputs.push_back(input.start);
+  return point;
 }
 
-std::vector<double> near_start_of(const engine::Model& model) {
-  std::vector<double> states;
+Point near_start_of(const engine::Model& model) {
+  constexpr double kAtWork = 0.6;  // of an input's range
+  Point point;
   double share = 0.31;  // of start_sd; another one for each state
   for (const engine::StateModel& state : model.states) {
-    states.push_back(state.start + share * state.start_sd);
+    point.states.push_back(state.start + share * state.start_sd);
     share = share * 1.17 > 0.6 ? 0.23 : share * 1.17;
   }
-  return states;
+  for (const engine::InputModel& input : model.inputs) {
+    point.inputs.push_back(input.hi > input.lo ? input.lo + kAtWork * (input.hi - input.lo) : input.start);
+  }
+  return point;
 }
 
 }  // namespace steelyard::client

@@ -12,11 +12,17 @@
 
 namespace steelyard::client {
 
-/// The machine linearised at `states`, in units of each state's start_sd and of the response time.
+/// States and inputs, in the model's order and units.
+struct Point {
+  std::vector<double> states;
+  std::vector<double> inputs;
+};
+
+/// The machine linearised at a point, in units of each state's start_sd and of the response time.
 class Linearised {
  public:
-  /// Inputs have their start values. Not for concurrent use with other users of the model's formulas.
-  Linearised(const engine::Model& model, const std::vector<double>& states);
+  /// Not for concurrent use with other users of the model's formulas.
+  Linearised(const engine::Model& model, const Point& point);
 
   /// Orthonormal rows that span what the channels show.
   [[nodiscard]] Eigen::MatrixXd shown_space(const std::vector<int>& channels) const;
@@ -30,8 +36,8 @@ class Linearised {
   Eigen::MatrixXd reads_;   // channels × states, rows of length 1 (or 0: reads no state here)
 };
 
-/// The start state, and a point near it that has no symmetry by chance.
-[[nodiscard]] std::vector<double> start_of(const engine::Model& model);
-[[nodiscard]] std::vector<double> near_start_of(const engine::Model& model);
+/// The start, and a point near it that has no symmetry by chance and all inputs at work.
+[[nodiscard]] Point start_of(const engine::Model& model);
+[[nodiscard]] Point near_start_of(const engine::Model& model);
 
 }  // namespace steelyard::client

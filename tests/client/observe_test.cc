@@ -113,6 +113,27 @@ TEST(Linearised, ANonlinearMachineMayShowMoreBesideTheStart) {
   EXPECT_EQ(beside.shown_states({0, 1}), (Shown{true, true}));
 }
 
+// A pump's wear shows only while it runs.
+const char* const kWear = R"(
+rig: wear
+response: 1 s
+states:
+  level: {unit: m, start: 1, start_sd: 1}
+  wear: {unit: "1", start: 0, start_sd: 0.1}
+inputs:
+  pump: {unit: m3/s, start: 0, range: [0, 0.1]}
+motion: {level: -pump * (1 - wear)}
+channels:
+  sonic: {reads: level, sd: 0.01, range: [0, 6]}
+)";
+
+TEST(Linearised, WhatAnInputBringsToLightShowsWhileItIsAtWork) {
+  const auto rig = load(kWear);
+  ASSERT_TRUE(rig);
+  EXPECT_EQ(Linearised(*rig->model, start_of(*rig->model)).shown_states({0}), (Shown{true, false}));
+  EXPECT_EQ(Linearised(*rig->model, near_start_of(*rig->model)).shown_states({0}), (Shown{true, true}));
+}
+
 TEST(Linearised, APointWithoutASlopeTellsNothing) {
   std::string text = kDistance;
   text.replace(text.find("start: 3"), 8, "start: 0");
