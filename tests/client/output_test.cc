@@ -2,10 +2,14 @@
 // Files appear when they are complete and not before.
 #include "cli/output.h"
 
+#include <fcntl.h>
 #include <gtest/gtest.h>
+#include <sys/resource.h>
 #include <sys/stat.h>
 #include <unistd.h>
 
+#include <array>
+#include <csignal>
 #include <filesystem>
 #include <fstream>
 #include <iterator>
@@ -75,23 +79,60 @@ TEST_F(OutputTest, KeepsTheModeAndTheSymbolicLinkOfAnOldFile) {
   EXPECT_EQ(fs::status(path).permissions(), fs::perms::owner_read | fs::perms::owner_write);
 }
 
-TEST_F(OutputTest, ADeviceIsWrittenDirectly) {
-  Output out("/dev/null");
+// A pipe of our own stands for all that is no regular file: were the code wrong, a test on a real device
+// would replace it.
+TEST_F(OutputTest, WhatIsNoRegularFileIsWrittenDirectly) {
+  const fs::path path = folder_ / "pipe";
+  ASSERT_EQ(::mkfifo(path.c_str(), 0600), 0);
+  const int reader = ::open(path.c_str(), O_RDONLY | O_NONBLOCK | O_CLOEXEC);
+  ASSERT_GE(reader, 0);
+  Output out(path);
   ASSERT_TRUE(out.open());
-  out.write("x");
+  out.write("abc");
   EXPECT_TRUE(out.finish());
-  struct stat status {};
-  ASSERT_EQ(::stat("/dev/null", &status), 0);
-  EXPECT_TRUE(S_ISCHR(status.st_mode));
+  std::array<char, 8> got{};
+  EXPECT_EQ(::read(reader, got.data(), got.size()), 3);
+  ::close(reader);
+  EXPECT_TRUE(fs::is_fifo(path));
+  EXPECT_EQ(files(), 1U);
 }
 
-TEST_F(OutputTest, AFullDiskIsToldAndNotTakenForSuccess) {
-  if (!fs::exists("/dev/full")) GTEST_SKIP() << "no /dev/full here";
-  Output out("/dev/full");
-  ASSERT_TRUE(out.open());
-  out.write("x");
-  EXPECT_FALSE(out.finish());
-  EXPECT_EQ(out.error(), "/dev/full: cannot be written: No space left on device");
+/// While it lives, files cannot grow beyond a few bytes: as on a full disk, writes fail.
+class SmallFiles {
+ public:
+  SmallFiles() : handler_(std::signal(SIGXFSZ, SIG_IGN)) {
+    ::getrlimit(RLIMIT_FSIZE, &before_);
+    rlimit small = before_;
+    small.rlim_cur = 4;
+    ::setrlimit(RLIMIT_FSIZE, &small);
+  }
+  ~SmallFiles() {
+    ::setrlimit(RLIMIT_FSIZE, &before_);
+    std::signal(SIGXFSZ, handler_);
+  }
+  SmallFiles(const SmallFiles&) = delete;
+  SmallFiles& operator=(const SmallFiles&) = delete;
+
+ private:
+  rlimit before_{};
+  void (*handler_)(int);
+};
+
+TEST_F(OutputTest, AFailedWriteIsToldAndNotTakenForSuccess) {
+  const fs::path path = folder_ / "out.csv";
+  bool finished = true;
+  std::string error;
+  {
+    Output out(path);
+    ASSERT_TRUE(out.open());
+    const SmallFiles small;
+    out.write("more than four bytes");
+    finished = out.finish();
+    error = out.error();
+  }
+  EXPECT_FALSE(finished);
+  EXPECT_EQ(error, path.string() + ": cannot be written: File too large");
+  EXPECT_EQ(files(), 0U);
 }
 
 TEST_F(OutputTest, AFolderThatIsNotThereIsTold) {
