@@ -119,6 +119,18 @@ class Reader final : public WatchSession {
   std::optional<grpc::Status> ended_;
 };
 
+/// Keeps all that it is offered until it is told to let go.
+class Hoarder final : public WatchSession {
+ public:
+  void offer(std::shared_ptr<const v1::Moment>, std::uint64_t) override { ++held_; }
+  [[nodiscard]] std::size_t backlog() const override { return held_; }
+  void end(const grpc::Status&) override {}
+  std::size_t let_go() { return held_.exchange(0); }
+
+ private:
+  std::atomic<std::size_t> held_ = 0;
+};
+
 class DirectTest : public ::testing::Test {
  protected:
   DirectTest() {
@@ -193,6 +205,33 @@ TEST_F(DirectTest, ManyThreadsAtOnceLoseNothing) {
     while (!reader->ended()) std::this_thread::yield();
     EXPECT_EQ(reader->ended()->error_code(), grpc::StatusCode::UNAVAILABLE);
   }
+}
+
+TEST_F(DirectTest, WatchOfEveryMomentHoldsTheRigUpAtItsBound) {
+  constexpr std::size_t kMoments = kMessages * kRows;  // far more than may wait
+  limits_.moments_waiting = 40;
+  limits_.chunk_moments = 10;
+  ASSERT_TRUE(put(trolley("a")).ok());
+  const auto rig = host("a");
+  const auto hoarder = std::make_shared<Hoarder>();
+  ASSERT_TRUE(rig->open_watch(hoarder, {Pace::Kind::kEveryMoment, {}}).ok());
+  const auto source = std::make_shared<Source>();
+  std::thread feeding([&] { source->run(*rig, "source"); });
+  std::size_t seen = 0;
+  while (seen < kMoments + 1) {  // and the first picture
+    std::size_t before = 0;
+    do {  // until nothing more comes
+      before = hoarder->backlog();
+      std::this_thread::sleep_for(std::chrono::milliseconds(20));
+    } while (hoarder->backlog() != before);
+    EXPECT_LE(before, limits_.moments_waiting);
+    const std::size_t taken = hoarder->let_go();
+    ASSERT_GT(taken, 0U) << "the rig stands still after " << seen;
+    seen += taken;
+    rig->wake();
+  }
+  feeding.join();
+  EXPECT_EQ(seen, kMoments + 1);
 }
 
 TEST_F(DirectTest, RemovalAnswersEverybody) {
