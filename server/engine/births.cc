@@ -7,13 +7,9 @@
 #include <cmath>
 
 #include "engine/normal.h"
+#include "engine/repeats.h"
 
 namespace steelyard::engine {
-namespace {
-
-constexpr double kFrozenRepeats = 0.98;
-
-}  // namespace
 
 // Competing risks per second of time between two readings.
 double Births::rate(Condition from, Condition to, const ChannelModel& c) const {

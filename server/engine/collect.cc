@@ -49,7 +49,10 @@ void Collector::merge_equal(Pool& pool) {
 
 double Collector::normalise(Pool& pool, int budget, double floor) {
   double top = -INFINITY;
-  for (int i = 0; i < pool.size(); ++i) top = std::max(top, pool[i].log_weight);
+  for (int i = 0; i < pool.size(); ++i) {
+    if (std::isnan(pool[i].log_weight)) pool[i].log_weight = -INFINITY;
+    top = std::max(top, pool[i].log_weight);
+  }
   double sum = 0.0;
   for (int i = 0; i < pool.size(); ++i) sum += std::exp(pool[i].log_weight - top);
   const double total = top + std::log(sum);

@@ -6,6 +6,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <numbers>
 
 #include "engine/normal.h"
 
@@ -21,6 +22,15 @@ constexpr double kFixedPointTolerance = 1e-2;
 double Likelihood::noise_variance(const Gamma& g, double spec_variance) const {
   if (!model_.options.learn_precision) return spec_variance;
   return spec_variance / (model_.options.cap_precision ? mean_below_one(g) : g.mean());
+}
+
+// A reading outside the range is not fused, so what is said of one is given that it lies inside; strays are
+// uniform there. Matters where the machine is all but unknown, after a long gap: every reading would
+// otherwise be likelier as a stray. Taken about the expectation, so that a hypothesis gains nothing by
+// expecting what lies outside.
+double Likelihood::log_within(double span, double variance) {
+  const double half = 0.5 * span / std::sqrt(variance);
+  return half > 8.0 ? 0.0 : std::log(std::erf(half / std::numbers::sqrt2));
 }
 
 double Likelihood::residual(const Occasion& occasion, double expected) const {
@@ -64,7 +74,12 @@ double Likelihood::influence(const Step& step) const {
 }
 
 // Moments of the mixture of the updated and the untouched Gaussian.
-void Likelihood::move(Hypothesis& h, const Step& step) const {
+void Likelihood::move(Hypothesis& h, const Step& step) {
+  // A covariance beyond what the variances allow (Cauchy–Schwarz) is rounding error: nothing is known of it.
+  for (int i = 0; i < h.dim; ++i) {
+    double& c = expected_.column[static_cast<std::size_t>(i)];
+    if (c * c > h.p(i, i) * step.total_variance) c = 0.0;
+  }
   const double by_mean = step.weight * step.shift / step.total_variance;
   const double by_cov = (-step.weight * step.shrink * step.total_variance +
                          step.weight * (1.0 - step.weight) * step.shift * step.shift) /
@@ -124,7 +139,8 @@ Absorbed Likelihood::absorb(Hypothesis& h, const Occasion& o) {
   const double r = noise_variance(g, expected_.spec_variance);
   if (o.censoring != Censoring::kNone) return absorb_censored(h, o, r);
   const double e = residual(o, expected_.mean);
-  const double log_inside = std::log(o.regular) + log_regular(e, g, s + r, model_.channels[j].resolution);
+  const double log_inside = std::log(o.regular) + log_regular(e, g, s + r, model_.channels[j].resolution) -
+                            log_within(o.span, s + r);
   Absorbed out;
   out.log_likelihood =
       o.regular < 1.0 ? log_sum(log_inside, std::log((1.0 - o.regular) * o.elsewhere)) : log_inside;

@@ -57,7 +57,8 @@ class Likelihood {
                const SecondMoment& second_moment) const;
   Absorbed absorb_censored(Hypothesis& h, const Occasion& occasion, double r);
   [[nodiscard]] double repeat_probability(const Occasion& occasion, double noise_variance) const;
-  void move(Hypothesis& h, const Step& step) const;
+  [[nodiscard]] static double log_within(double span, double variance);
+  void move(Hypothesis& h, const Step& step);
   [[nodiscard]] double influence(const Step& step) const;
 
   const Model& model_;

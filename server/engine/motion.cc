@@ -11,14 +11,13 @@
 #include <cmath>
 
 #include "engine/cholesky.h"
+#include "engine/time.h"
 
 namespace steelyard::engine {
 namespace {
 
 constexpr double kStepsPerResponse = 20.0;
 constexpr int kMaxSteps = 200;
-
-double seconds(TimeNs ns) { return static_cast<double>(ns) * 1e-9; }
 
 bool all_affine(const Model& model) {
   return std::all_of(model.states.begin(), model.states.end(),

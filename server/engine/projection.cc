@@ -8,6 +8,14 @@
 #include "engine/cholesky.h"
 
 namespace steelyard::engine {
+namespace {
+
+// The parts of the variance may cancel, and the update takes from them what the reading tells: both leave
+// rounding errors of some units in the parts' last place. Counted as spread, they cannot make a variance
+// negative or a machine that was left alone for a month certain.
+constexpr double kRounding = 1e-14;
+
+}  // namespace
 
 double Projector::spec_variance(const Hypothesis& h, int channel, double time_s) const {
   const auto& c = model_.channels[static_cast<std::size_t>(channel)];
@@ -76,7 +84,7 @@ void Projector::project(const Hypothesis& h, int channel, Condition condition, d
     out.slope.resize(0);
     out.mean = h.mean[own];
     for (int i = 0; i < d; ++i) out.column[static_cast<std::size_t>(i)] = h.p(own, i);
-    out.variance = h.p(own, own);
+    out.variance = (1.0 + kRounding) * h.p(own, own);
     return;
   }
   if (const auto* affine = std::get_if<AffineForm>(&c.reads)) {
@@ -102,17 +110,22 @@ void Projector::project(const Hypothesis& h, int channel, Condition condition, d
   const bool walks = is_walk(condition);
   if (bias >= 0) add_row(bias, 1.0);
   if (walks) add_row(own, 1.0);
-  for (int i = 0; i < layout_.core; ++i)
+  double parts = 0.0;
+  for (int i = 0; i < layout_.core; ++i) {
     out.variance += out.slope(i) * out.column[static_cast<std::size_t>(i)];
+    parts += out.slope(i) * out.slope(i) * h.p(i, i);
+  }
   if (bias >= 0) {
     out.mean += h.mean[bias];
     out.variance += out.column[static_cast<std::size_t>(bias)];
+    parts += h.p(bias, bias);
   }
   if (walks) {
     out.mean += h.mean[own];
     out.variance += out.column[static_cast<std::size_t>(own)];
+    parts += h.p(own, own);
   }
-  out.variance = std::max(out.variance, 0.0);
+  out.variance = std::max(out.variance, 0.0) + kRounding * parts;
 }
 
 }  // namespace steelyard::engine

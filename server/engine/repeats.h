@@ -9,6 +9,9 @@
 
 namespace steelyard::engine {
 
+/// A frozen channel's next reading: the last value with this probability, else anything over the range.
+inline constexpr double kFrozenRepeats = 0.98;
+
 /// Step of the channel's values, for the probability of an exact repeat.
 [[nodiscard]] double effective_resolution(const ChannelModel& channel);
 

@@ -6,6 +6,7 @@
 
 #include "engine/normal.h"
 #include "engine/posterior.h"
+#include "engine/time.h"
 
 namespace steelyard::engine {
 namespace {
@@ -15,8 +16,6 @@ constexpr double kNegligible = 1e-9;        // weight under which a hypothesis d
 constexpr std::size_t kExplanations = 3;
 
 using Policy = boost::math::policies::policy<boost::math::policies::promote_double<false>>;
-
-double seconds(TimeNs ns) { return static_cast<double>(ns) * 1e-9; }
 
 // P(x ≤ value) under the mixture's marginal of z's element `at`.
 double mixture_cdf(const Pool& pool, int at, double value) {

@@ -4,8 +4,11 @@
 
 #include <algorithm>
 #include <cmath>
+#include <limits>
 #include <numeric>
 #include <tuple>
+
+#include "engine/time.h"
 
 namespace steelyard::timeline {
 namespace {
@@ -51,7 +54,11 @@ std::uint64_t Timeline::position(std::uint32_t source) const { return sources_[s
 TimeNs Timeline::moment_of(const Reading& reading) const {
   if (reading.signal.is_input) return reading.time_ns;
   const auto& channel = rig_->model->channels[static_cast<std::size_t>(reading.signal.index)];
-  return reading.time_ns - static_cast<TimeNs>(std::llround(channel.delay_s * 1e9));
+  TimeNs moment = 0;
+  // A stamp near the beginning of all time stays there.
+  if (__builtin_sub_overflow(reading.time_ns, engine::nanoseconds(channel.delay_s), &moment))
+    return std::numeric_limits<TimeNs>::min();
+  return moment;
 }
 
 bool Timeline::before(const Item& a, const Item& b) const {

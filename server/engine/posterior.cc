@@ -1,0 +1,225 @@
+// SPDX-License-Identifier: Apache-2.0
+// The posterior before any reading, and its way from one time to another (engine.md §3): machine modes split
+// and mix, hypotheses move, inputs hold or become unknown.
+#include "engine/posterior.h"
+
+#include <algorithm>
+#include <cmath>
+
+#include "engine/normal.h"
+#include "engine/time.h"
+
+namespace steelyard::engine {
+namespace {
+
+// Walk speeds of creeping, offset, wandering and stuck, in datasheet sd per √R (engine.md §2).
+constexpr std::array<double, kConditions> kWalk{0.0, 0.1, 2.0, 30.0, 0.05, 0.0};
+
+int standing_capacity(const Options& o) { return 3 * o.max_hypotheses + o.parents * Births::kMostChildren; }
+
+}  // namespace
+
+Posterior::Posterior(std::shared_ptr<const Model> m)
+    : model(std::move(m)),
+      layout(*model),
+      motion(*model, layout),
+      likelihood(*model, layout),
+      births(*model, layout, likelihood),
+      collector(*model),
+      now(layout, standing_capacity(model->options)),
+      next(layout, standing_capacity(model->options)),
+      children(layout, std::max(1, model->options.parents * Births::kMostChildren)),
+      channels(model->channels.size()),
+      inputs(model->inputs.size()) {
+  mode_on = {model->still.on, true, model->jolt.on};
+  absorbed.resize(static_cast<std::size_t>(now.capacity()));
+  Hypothesis& h = now.append();
+  h.own_at.fill(-1);
+  h.dim = layout.fixed;
+  std::fill_n(h.cov, h.dim * h.dim, 0.0);
+  for (int i = 0; i < layout.states; ++i) {
+    const auto& s = model->states[static_cast<std::size_t>(i)];
+    h.mean[i] = s.start;
+    h.p(i, i) = s.start_sd * s.start_sd;
+  }
+  for (int i = layout.states; i < layout.core; ++i) {
+    const auto& u = model->inputs[static_cast<std::size_t>(i - layout.states)];
+    h.mean[i] = u.start;
+    h.p(i, i) = u.sd * u.sd;
+  }
+  for (int j = 0; j < layout.channels; ++j) {
+    const auto& c = model->channels[static_cast<std::size_t>(j)];
+    const int bias = layout.bias_at[static_cast<std::size_t>(j)];
+    if (bias >= 0) {
+      h.mean[bias] = 0.0;
+      h.p(bias, bias) = c.bias_sd * c.bias_sd;
+    }
+    h.noise[j] = {0.5 * c.prior_readings, 0.5 * c.prior_readings};
+    auto& memory = channels[static_cast<std::size_t>(j)];
+    memory.repeats = RepeatRate(c, model->response_s);
+    memory.spec_sd = std::sqrt(likelihood.projector().spec_variance(h, j, 0.0));
+    refresh_walks(j);
+  }
+}
+
+// The parts that refer to model and layout are made anew; everything that has been learned is copied.
+Posterior::Posterior(const Posterior& other)
+    : model(other.model),
+      layout(other.layout),
+      motion(*model, layout),
+      likelihood(*model, layout),
+      births(*model, layout, likelihood),
+      collector(*model),
+      now(other.now),
+      next(layout, other.next.capacity()),
+      children(layout, other.children.capacity()),
+      walk_density(other.walk_density),
+      channels(other.channels),
+      inputs(other.inputs),
+      mode_on(other.mode_on),
+      absorbed(other.absorbed.size()),
+      started(other.started),
+      predicted_to(other.predicted_to),
+      time(other.time),
+      log_evidence(other.log_evidence) {}
+
+void Posterior::refresh_walks(int channel) {
+  const auto j = static_cast<std::size_t>(channel);
+  for (std::size_t c = 0; c < kConditions; ++c) {
+    const double step = kWalk[c] * channels[j].spec_sd;
+    walk_density[c][j] = step * step / model->response_s;
+  }
+}
+
+void Posterior::start(TimeNs t) {
+  started = true;
+  time = predicted_to = t;
+  for (std::size_t i = 0; i < inputs.size(); ++i) {
+    inputs[i].expires = model->inputs[i].period_s > 0.0;
+    inputs[i].good_until = t + nanoseconds(model->inputs[i].period_s);
+  }
+}
+
+// Every hypothesis goes into each machine mode it can reach; equal keys are mixed by moments at once, as in
+// the interacting multiple model filter (Blom & Bar-Shalom 1988).
+void Posterior::split_modes(double dt_s) {
+  if (mode_gap_s != dt_s) {
+    LinearSystem chain{CoreMatrix::Zero(kModes, kModes), CoreVector::Zero(kModes), CoreVector::Zero(kModes)};
+    const auto link = [&](Mode from, Mode to, double every_s) {
+      chain.rate(static_cast<int>(from), static_cast<int>(to)) = 1.0 / every_s;
+    };
+    if (mode_on[0]) {
+      link(Mode::kUsual, Mode::kStill, model->still.every_s);
+      link(Mode::kStill, Mode::kUsual, model->still.last_s);
+    }
+    if (mode_on[2]) {
+      link(Mode::kUsual, Mode::kJolted, model->jolt.every_s);
+      link(Mode::kJolted, Mode::kUsual, model->jolt.last_s);
+    }
+    if (mode_on[0] && mode_on[2]) link(Mode::kStill, Mode::kJolted, model->jolt.every_s);
+    for (int i = 0; i < kModes; ++i) chain.rate(i, i) = -chain.rate.row(i).sum();
+    Transition moved;
+    discretise(chain, dt_s, moved);
+    mode_switch = moved.transition;
+    mode_gap_s = dt_s;
+  }
+  next.clear();
+  for (int begin = 0; begin < now.size();) {
+    const int end = now.group_end(begin);
+    for (int to = 0; to < kModes; ++to) {
+      if (!mode_on[static_cast<std::size_t>(to)]) continue;
+      Hypothesis* target = nullptr;
+      for (int i = begin; i < end; ++i) {
+        const double p = mode_switch(static_cast<int>(now[i].mode), to);
+        const double log_weight = now[i].log_weight + std::log(p);
+        if (!(log_weight > std::log(model->options.weight_floor))) continue;
+        if (!target) {
+          target = &next.append_copy(now[i]);
+          target->mode = static_cast<Mode>(to);
+          target->log_weight = log_weight;
+        } else {
+          const double kept = now[i].log_weight;
+          now[i].log_weight = log_weight;
+          merge(*target, now[i], layout.channels);
+          now[i].log_weight = kept;
+        }
+      }
+    }
+    begin = end;
+  }
+  collector.normalise(next, 2 * model->options.max_hypotheses, model->options.weight_floor);
+}
+
+void Posterior::predict_next(TimeNs t) {
+  split_modes(seconds(t - predicted_to));
+  for (TimeNs from = predicted_to; from < t;) {
+    const TimeNs to = next_expiry(from, t);
+    motion.prepare(from, to, unknown_inputs(from));
+    for (int begin = 0; begin < next.size(); begin = next.group_end(begin))
+      motion.predict(next.slice(begin, next.group_end(begin)), walk_density);
+    from = to;
+  }
+}
+
+void Posterior::advance(TimeNs t) {
+  if (!started) start(t);
+  time = t;
+  if (t <= predicted_to) return;
+  predict_next(t);
+  std::swap(now, next);
+  predicted_to = t;
+}
+
+unsigned Posterior::unknown_inputs(TimeNs t) const {
+  unsigned mask = 0;
+  for (std::size_t i = 0; i < inputs.size(); ++i)
+    if (!inputs[i].good || (inputs[i].expires && t >= inputs[i].good_until)) mask |= 1U << i;
+  return mask;
+}
+
+TimeNs Posterior::next_expiry(TimeNs from, TimeNs to) const {
+  TimeNs soonest = to;
+  for (const auto& input : inputs)
+    if (input.good && input.expires && input.good_until > from && input.good_until < soonest)
+      soonest = input.good_until;
+  return soonest;
+}
+
+// A scalar Kalman update of z's element `at`: what an input that was not known turned out to be.
+void Posterior::condition_on_input(Hypothesis& h, int at, double value, double variance) const {
+  const double total = h.p(at, at) + variance;
+  if (!(total > 0.0)) return;
+  const double e = value - h.mean[at];
+  h.log_weight += log_normal(e, total);
+  std::array<double, kMaxDim> column;
+  for (int i = 0; i < h.dim; ++i) column[static_cast<std::size_t>(i)] = h.p(i, at);
+  for (int i = 0; i < h.dim; ++i) {
+    const double gain = column[static_cast<std::size_t>(i)] / total;
+    h.mean[i] += gain * e;
+    for (int k = 0; k < h.dim; ++k) h.p(i, k) -= gain * column[static_cast<std::size_t>(k)];
+  }
+}
+
+void Posterior::set_input(TimeNs t, int input, double value, bool good) {
+  advance(t);
+  const auto& u = model->inputs[static_cast<std::size_t>(input)];
+  auto& memory = inputs[static_cast<std::size_t>(input)];
+  if (!good || value < u.lo || value > u.hi) {
+    memory.good = false;
+    return;
+  }
+  const bool was_unknown = unknown_inputs(t) >> static_cast<unsigned>(input) & 1U;
+  const int at = layout.states + input;
+  for (int i = 0; i < now.size(); ++i) {
+    Hypothesis& h = now[i];
+    if (was_unknown) condition_on_input(h, at, value, u.sd * u.sd);
+    for (int k = 0; k < h.dim; ++k) h.p(at, k) = h.p(k, at) = 0.0;
+    h.mean[at] = value;
+    h.p(at, at) = u.sd * u.sd;
+  }
+  if (was_unknown) collector.normalise(now, now.capacity(), model->options.weight_floor);
+  memory.good = true;
+  memory.good_until = t + nanoseconds(u.period_s);
+}
+
+}  // namespace steelyard::engine
