@@ -89,6 +89,38 @@ TEST(Extremes, OneChannelAlone) {
   for (std::uint64_t seed = 1; seed <= 5; ++seed) run({1.0}, seed);
 }
 
+// A healthy axis that stands still and unread overnight, for days, for a month. Its position is then expected
+// anywhere within kilometres, where a reading within the range is not to be mistaken for a stray: the trust
+// of no channel falls, whichever reads first, and the position is known again at once.
+TEST(Extremes, AxisIsFoundAgainAfterALongGap) {
+  const suite::Row none{"none", {}, {true, true, true, true}, true};
+  constexpr int kBreak = 500;
+  for (const double days : {0.01, 0.1, 1.0, 3.0, 30.0}) {
+    for (std::uint64_t seed = 1; seed <= 3; ++seed) {
+      SCOPED_TRACE("seed " + std::to_string(seed) + ", days " + std::to_string(days));
+      const auto truth = suite::simulate(seed);
+      const auto readings = suite::read(truth, none, seed);
+      Engine engine(suite::axis_model({}, none));
+      Estimate e;
+      double least = 1.0;
+      for (int step = 0; step < 1000; ++step) {
+        const TimeNs gap = step >= kBreak ? static_cast<TimeNs>(days * 86400e9) : 0;
+        const TimeNs t = axis_time(step) + gap;
+        for (const int j : {2, 1, 3, 0})  // the coarsest first
+          engine.read(t, j, readings.value[static_cast<std::size_t>(j)][static_cast<std::size_t>(step)],
+                      Quality::kGood);
+        engine.estimate(t, Detail::kBrief, e);
+        for (const auto& c : e.channels) least = std::min(least, c.trust);
+        if (step < kBreak + 10) continue;
+        const double error = e.states[0].mean - truth.position[static_cast<std::size_t>(step)];
+        ASSERT_LT(std::fabs(error), 6.0 * e.states[0].sd);
+        ASSERT_LT(e.states[0].sd, 0.02);
+      }
+      EXPECT_GE(least, 0.5);
+    }
+  }
+}
+
 // A burst of the same time: no gap at all.
 TEST(Extremes, ManyReadingsOfOneMoment) {
   auto model = axis({0.1, 0.1});

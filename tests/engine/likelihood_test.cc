@@ -142,7 +142,7 @@ TEST(Absorb, KnowsHowLikelyARepeatIs) {
       for (auto& channel : model.channels) channel.resolution = 0.2;
     });
     const Absorbed a = c.read(0.5);
-    const double sd = std::sqrt(c.s + c.spec / c.noise.mean());
+    const double sd = std::sqrt(c.s + c.spec / mean_below_one(c.noise));
     EXPECT_NEAR(a.repeat_probability, bin_probability(c.occasion.last_value - c.expected, sd, 0.2), 1e-12);
   }
 }

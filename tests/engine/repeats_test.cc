@@ -45,13 +45,25 @@ TEST(RepeatRate, LearnsFromReadingsAndNotFromAFreeze) {
   EXPECT_DOUBLE_EQ(rate.mean(), prior);
   for (int i = 0; i < 20; ++i) rate.learn(true, 1.0, 0.0);
   EXPECT_NEAR(rate.mean(), 0.5 * (prior + 1.0), 1e-12);  // as many readings as the prior is worth
-  for (int i = 0; i < 20; ++i) rate.learn(false, 1.0, 0.0);
-  EXPECT_NEAR(rate.mean(), (prior + 1.0) / 3.0, 1e-12);
+}
+
+// Repeats come in runs: in pairs of two readings, a change is followed by a repeat and a repeat by a change.
+TEST(RepeatRate, LearnsWhatFollowsARepeatApartFromWhatFollowsAChange) {
+  RepeatRate rate(digital(1.0, 0.1), 1.0);
+  const double prior = rate.mean();
+  for (int i = 0; i < 20; ++i) {
+    rate.learn(true, 1.0, 0.0);
+    rate.learn(false, 1.0, 0.0);
+  }
+  EXPECT_NEAR(rate.mean(), 0.5 * (prior + 1.0), 1e-12);  // after a change
+  rate.learn(true, 0.0, 0.0);
+  EXPECT_NEAR(rate.mean(), 0.5 * prior, 1e-12);  // after a repeat
 }
 
 TEST(RepeatRate, ForgetsByHalfIn100ResponseTimes) {
   RepeatRate rate(digital(1.0, 0.1), 2.0);
   const double prior = rate.mean();
+  rate.learn(true, 0.0, 0.0);
   for (int i = 0; i < 20; ++i) rate.learn(true, 1.0, 0.0);
   rate.learn(true, 0.0, 200.0);
   EXPECT_NEAR(rate.mean(), (20.0 * prior + 10.0) / 30.0, 1e-12);
