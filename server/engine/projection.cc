@@ -13,7 +13,7 @@ namespace {
 // The parts of the variance may cancel, and the update takes from them what the reading tells: both leave
 // rounding errors of some units in the parts' last place. Counted as spread, they cannot make a variance
 // negative or a machine that was left alone for a month certain.
-constexpr double kRounding = 1e-14;
+constexpr double kRounding = 1e-15;
 
 }  // namespace
 

@@ -19,10 +19,10 @@ engine::Engine scalar(double phi, double q, double r) {
   return start(model);
 }
 
-// Source: closed form P = q/2 + √(q²/4 + qr) for phi = 1 (golden ratio at q = r = 1) and its extension to
-// other phi, against scipy 1.10.1's solve_discrete_are. The catalogue's tolerance 1e-12 holds for the
-// equation's solution; the covariance form P − P²/S loses about P/r units in the last place, so 1e-11 at P/r
-// = 1e4.
+// Source: closed form P = q/2 + √(q²/4 + qr) for phi = 1 (golden ratio at q = r = 1) and its extension to other
+// phi, against scipy 1.10.1's solve_discrete_are. The catalogue's tolerance 1e-12 holds for the equation's
+// solution; the engine counts rounding, 1e-15 of P, as spread, which costs the filtered variance 1e-15·P/r: at
+// P/r = 1e4 it is held to 1e-10.
 TEST(Riccati, SteadyVariancesAndGainsAreTheClosedForms) {
   const Csv table = Csv::open("scalar_dare.csv");
   ASSERT_EQ(table.rows(), 11U);
@@ -36,7 +36,7 @@ TEST(Riccati, SteadyVariancesAndGainsAreTheClosedForms) {
     const double predicted = std::pow(estimate(engine, t).states[0].sd, 2);
     read(engine, t, 0, 1.0);
     const double gain = estimate(engine, t).states[0].mean;
-    const double tolerance = predicted > 100.0 * r ? 1e-11 : 1e-12;
+    const double tolerance = predicted > 100.0 * r ? 1e-10 : 1e-12;
     EXPECT_LT(relative(filtered, table.number(i, "P_filt")), tolerance);
     EXPECT_LT(relative(predicted, table.number(i, "P_pred_closed")), tolerance);
     EXPECT_LT(relative(gain, table.number(i, "K")), tolerance);
