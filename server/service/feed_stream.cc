@@ -167,9 +167,14 @@ void FeedStream::OnCancel() {
 }
 
 void FeedStream::OnDone() {
-  const auto last = std::move(self_);
-  // The mailbox may hold this feed for ever if the service ends: the feed must not hold its rig then.
-  const auto host = std::move(host_);
+  std::shared_ptr<FeedStream> last;
+  std::shared_ptr<Host> host;
+  {
+    const std::lock_guard lock(mutex_);  // what was done under it comes before the end of this object
+    last = std::move(self_);
+    // The mailbox may hold this feed for ever if the service ends: the feed must not hold its rig then.
+    host = std::move(host_);
+  }
   // Behind the readings that are still in the mailbox, which are run.
   if (host) (void)host->post({last, CloseFeed{}});
 }

@@ -132,8 +132,13 @@ void WatchStream::OnCancel() {
 }
 
 void WatchStream::OnDone() {
-  const auto last = std::move(self_);
-  const auto host = std::move(host_);  // as in FeedStream::OnDone
+  std::shared_ptr<WatchStream> last;
+  std::shared_ptr<Host> host;
+  {
+    const std::lock_guard lock(mutex_);  // as in FeedStream::OnDone
+    last = std::move(self_);
+    host = std::move(host_);
+  }
   if (host) host->close_watch(last);
 }
 

@@ -169,6 +169,9 @@ TEST_F(RigsTest, DelayIsRefusedUntilTheServiceCanRewind) {
 }
 
 TEST_F(RigsTest, EmptyAndOversizedRequestsAreRefused) {
+  ServerOptions options;
+  options.limits.rig_bytes = 4096;
+  start(options);
   v1::PutRigRequest request;
   v1::PutRigResponse answer;
   {
@@ -176,7 +179,7 @@ TEST_F(RigsTest, EmptyAndOversizedRequestsAreRefused) {
     EXPECT_TRUE(
         is_status(stub_->PutRig(&context, request, &answer), StatusCode::INVALID_ARGUMENT, "description:"));
   }
-  EXPECT_TRUE(is_status(put(std::string((1 << 20) + 1, '#')), StatusCode::INVALID_ARGUMENT, "bytes"));
+  EXPECT_TRUE(is_status(put(std::string(4097, '#')), StatusCode::INVALID_ARGUMENT, "has 4097 bytes"));
   request.set_file(trolley());
   request.set_author(std::string(256, 'a'));
   grpc::ClientContext context;

@@ -18,7 +18,7 @@ class StormTest : public ServiceTest {
   void SetUp() override {
     ServerOptions options;
     options.threads = 2;
-    options.limits.mailbox_readings = 200;
+    options.limits.mailbox_readings = 30;
     options.limits.moments_waiting = 20;
     start(options);
   }
@@ -27,7 +27,7 @@ class StormTest : public ServiceTest {
                  std::int64_t& time_ns) {
     FeedCall feed(*stub_, rig, source, {"left", "right"});
     for (std::uint64_t i = 0; i < 5; ++i) {
-      feed.send(batch({.first_sequence = 1 + 20 * i, .start_ns = time_ns, .rows = 20}));
+      feed.send(batch({.first_sequence = 1 + 10 * i, .start_ns = time_ns, .rows = 10}));
       time_ns += 2 * kSecond;
     }
     if (random() % 2 == 0) return;  // goes away
@@ -81,7 +81,7 @@ TEST_F(StormTest, NothingHangsOrDies) {
     threads.emplace_back([this, t] {
       std::mt19937 random(kSeed + t);
       std::int64_t time_ns = kStart;
-      for (int i = 0; i < 60; ++i) act(random, "source " + std::to_string(t % 3), time_ns);
+      for (int i = 0; i < 25; ++i) act(random, "source " + std::to_string(t % 3), time_ns);
     });
   }
   for (std::thread& thread : threads) thread.join();
