@@ -29,10 +29,10 @@ motion:
   shortfall: -shortfall / 7200
 unrest: {level: 0.0002, inflow: 0.002, shortfall: 0.0003}
 channels:
-  sonic: {reads: level, sd: 0.004 + 0.04 * abs(inflow), bias_sd: 0.01, range: [0, 6], resolution: 0.001, period: 1 s,
-          fails_every: 60 d}
-  radar: {reads: level, sd: 0.002 + 0.02 * abs(inflow), bias_sd: 0.005, range: [0, 6], resolution: 0.001, period: 1 s,
-          fails_every: 180 d}
+  sonic: {reads: level, sd: 0.004 + 0.04 * abs(inflow), bias_sd: 0.01, range: [0, 6], resolution: 0.001,
+          period: 1 s, fails_every: 60 d}
+  radar: {reads: level, sd: 0.002 + 0.02 * abs(inflow), bias_sd: 0.005, range: [0, 6], resolution: 0.001,
+          period: 1 s, fails_every: 180 d}
   cell:  {reads: level, sd: 0.0015 + 0.002 * abs(inflow), bias_sd: 0.015, range: [0.15, 6], resolution: 0.001,
           period: 1 s, fails_every: 180 d}
   meter: {reads: inflow, sd: 0.001 + 0.02 * abs(inflow), bias_sd: 0.001, range: [0, 0.5], resolution: 0.0001,
