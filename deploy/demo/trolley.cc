@@ -71,7 +71,7 @@ double slip_m(double time_s) {
 
 void poll(Log& log, long step, double time_s, const Trolley& trolley, double setpoint_ms, Random& random) {
   const auto put = [&](std::string_view channel, double value, int decimals) {
-    const std::int64_t late_ms = random.whole(2, 8);
+    const std::int64_t late_ms = random.whole(1, 2);
     const std::int64_t time_ms = log.start_s * 1000 + std::llround(time_s * 1000.0) + late_ms;
     log.rows.push_back({time_ms, channel, to_counts(value, decimals), decimals});
   };
