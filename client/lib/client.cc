@@ -16,6 +16,7 @@ namespace {
 
 constexpr int kFirstBackOffMs = 100;
 constexpr int kLongestBackOffMs = 3'000;
+constexpr int kHandshakeMs = 10'000;  // gRPC's "least back-off" is how long one attempt may take
 constexpr int kKeepaliveMs = 20'000;
 constexpr int kKeepaliveTimeoutMs = 10'000;
 constexpr std::chrono::milliseconds kPoll{100};  // how soon a stop is noticed while connecting
@@ -23,7 +24,7 @@ constexpr std::chrono::milliseconds kPoll{100};  // how soon a stop is noticed w
 std::shared_ptr<grpc::Channel> make_channel(const std::string& address) {
   grpc::ChannelArguments arguments;
   arguments.SetInt(GRPC_ARG_INITIAL_RECONNECT_BACKOFF_MS, kFirstBackOffMs);
-  arguments.SetInt(GRPC_ARG_MIN_RECONNECT_BACKOFF_MS, kFirstBackOffMs);
+  arguments.SetInt(GRPC_ARG_MIN_RECONNECT_BACKOFF_MS, kHandshakeMs);
   arguments.SetInt(GRPC_ARG_MAX_RECONNECT_BACKOFF_MS, kLongestBackOffMs);
   arguments.SetInt(GRPC_ARG_KEEPALIVE_TIME_MS, kKeepaliveMs);
   arguments.SetInt(GRPC_ARG_KEEPALIVE_TIMEOUT_MS, kKeepaliveTimeoutMs);

@@ -80,7 +80,8 @@ TEST_F(ClientTest, CallsWork) {
   ASSERT_TRUE(client.put_rig({.text = "rig: [", .file_name = "wrong.yaml"}, put).ok());
   ASSERT_GE(put.problems_size(), 1);
   EXPECT_NE(put.problems(0).text().find("wrong.yaml:1"), std::string::npos);
-  for (const char* name : {"b", "a"}) ASSERT_TRUE(client.put_rig({.text = trolley(name)}, put).ok());
+  for (const char* name : {"b", "a"})
+    ASSERT_TRUE(is_status(client.put_rig({.text = trolley(name)}, put), StatusCode::OK, ""));
   EXPECT_EQ(put.revision(), 1U);
   std::vector<v1::RigSummary> rigs;
   ASSERT_TRUE(client.list_rigs(rigs).ok());
@@ -103,7 +104,7 @@ TEST_F(ClientTest, ListGoesThroughAllPages) {
   Client client(address());
   v1::PutRigResponse put;
   for (const char* name : {"a", "b", "c", "d", "e"})
-    ASSERT_TRUE(client.put_rig({.text = trolley(name)}, put).ok());
+    ASSERT_TRUE(is_status(client.put_rig({.text = trolley(name)}, put), StatusCode::OK, ""));
   std::vector<v1::RigSummary> rigs;
   ASSERT_TRUE(client.list_rigs(rigs).ok());
   EXPECT_EQ(rigs.size(), 5U);
