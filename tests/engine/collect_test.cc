@@ -101,6 +101,20 @@ TEST(Collector, FindsTheHeaviestFirst) {
   EXPECT_EQ(heavier, 4);
 }
 
+// Two of three equal ones go; the heavier one that stands behind them stays.
+TEST(Collector, TiesAtTheCutPushNothingHeavierOut) {
+  Random random(kSeed + 5);
+  Scene scene(random_model(random, 2, 0, 3));
+  Collector collector(*scene.model);
+  for (const double log_weight : {-2.0, -2.0, -2.0, -1.0, -5.0})
+    scene.random_hypothesis(random).log_weight = log_weight;
+  const double heaviest = scene.pool[3].mean[0];
+  collector.normalise(scene.pool, 2, 1e-20);
+  ASSERT_EQ(scene.pool.size(), 2);
+  EXPECT_EQ(scene.pool[1].mean[0], heaviest);
+  EXPECT_NEAR(scene.pool[1].log_weight - scene.pool[0].log_weight, 1.0, 1e-14);
+}
+
 // Equal weights, two channels offset in turn: whichever order they are declared in, the same one stays.
 TEST(Collector, TiesGoByNameAndNotByOrder) {
   for (const bool swapped : {false, true}) {

@@ -228,6 +228,25 @@ TEST(Absorb, CensoredReadingThatWasCertainChangesNothing) {
   EXPECT_LT((covariance_of(*c.hypothesis) - c.cov).norm(), 1e-12);
 }
 
+// A covariance greater than the variances allow comes of rounding beside a huge variance. Taken at its word
+// it would make a variance negative.
+TEST(Absorb, CovarianceThatIsRoundingErrorMovesNothing) {
+  for (std::uint64_t seed = 1; seed <= kRuns; ++seed) {
+    SCOPED_TRACE("seed " + std::to_string(seed));
+    Case c(seed, fixed_precision);
+    const int own = c.hypothesis->own_at[2];
+    if (c.channel == 2) continue;  // the stuck channel reads its own number
+    const double variance = 1e-18;
+    for (int i = 0; i < c.hypothesis->dim; ++i)
+      c.hypothesis->p(own, i) = c.hypothesis->p(i, own) = i == own ? variance : 1e-3;
+    const double level = c.hypothesis->mean[own];
+    c.read(2.0);
+    EXPECT_EQ(c.hypothesis->p(own, own), variance);
+    EXPECT_EQ(c.hypothesis->mean[own], level);
+    for (int i = 0; i < c.hypothesis->dim; ++i) EXPECT_GT(c.hypothesis->p(i, i), 0.0);
+  }
+}
+
 TEST(Absorb, InfluenceIsTheGainOnTheStatesAlone) {
   for (std::uint64_t seed = 1; seed <= kRuns; ++seed) {
     SCOPED_TRACE("seed " + std::to_string(seed));
