@@ -113,7 +113,7 @@ int place_of(const Hypothesis& h, int channel) {
 
 void shift_places(Hypothesis& h, int from, int by) {
   for (auto& at : h.own_at)
-    if (at >= from) at = static_cast<std::int8_t>(at + by);
+    if (at >= from) at = static_cast<std::int16_t>(at + by);
 }
 
 }  // namespace
@@ -143,7 +143,7 @@ void add_own(Hypothesis& h, int channel, double mean, double variance, const dou
   for (int i = dim - 1; i > at; --i) h.mean[i] = h.mean[i - 1];
   h.mean[at] = mean;
   shift_places(h, at, 1);
-  h.own_at[static_cast<std::size_t>(channel)] = static_cast<std::int8_t>(at);
+  h.own_at[static_cast<std::size_t>(channel)] = static_cast<std::int16_t>(at);
   h.dim = dim;
 }
 

@@ -59,10 +59,10 @@ struct Hypothesis {
   Conditions conditions;
   Mode mode = Mode::kUsual;
   int dim = 0;
-  std::array<std::int8_t, kMaxChannels> own_at{};  ///< index in z of a channel's own number, −1: none
-  double* mean = nullptr;                          ///< dim
-  double* cov = nullptr;                           ///< dim × dim, row-major, full and symmetric
-  Gamma* noise = nullptr;                          ///< by channel
+  std::array<std::int16_t, kMaxChannels> own_at{};  ///< index in z of a channel's own number, −1: none
+  double* mean = nullptr;                           ///< dim
+  double* cov = nullptr;                            ///< dim × dim, row-major, full and symmetric
+  Gamma* noise = nullptr;                           ///< by channel
 
   [[nodiscard]] double& p(int i, int k) { return cov[i * dim + k]; }
   [[nodiscard]] double p(int i, int k) const { return cov[i * dim + k]; }

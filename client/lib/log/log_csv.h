@@ -43,6 +43,14 @@ struct LogRow {
   std::vector<LogReading> readings;
 };
 
+/// Where a long log's cells stand. (Not inside the reader: clang 14 cannot make an optional of a nested
+/// aggregate with initialisers while the class is incomplete.)
+struct LongColumns {
+  std::size_t channel = 0;
+  std::size_t value = 0;
+  std::optional<std::size_t> quality;
+};
+
 class LogReader {
  public:
   /// What a name in the log stands for; nullopt: the rig has no such channel or input.
@@ -69,12 +77,6 @@ class LogReader {
     std::size_t value = 0;
     std::optional<std::size_t> quality;
   };
-  struct LongColumns {
-    std::size_t channel = 0;
-    std::size_t value = 0;
-    std::optional<std::size_t> quality;
-  };
-
   bool open_long(const std::vector<CsvReader::Cell>& header);
   bool open_wide(const std::vector<CsvReader::Cell>& header);
   bool add_wide_column(const CsvReader::Cell& cell, std::size_t at);
