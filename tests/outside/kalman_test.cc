@@ -19,10 +19,10 @@ engine::Engine scalar(double phi, double q, double r) {
   return start(model);
 }
 
-// Source: closed form P = q/2 + √(q²/4 + qr) for phi = 1 (golden ratio at q = r = 1) and its extension to other
-// phi, against scipy 1.10.1's solve_discrete_are. The catalogue's tolerance 1e-12 holds for the equation's
-// solution; the engine counts rounding, 1e-15 of P, as spread, which costs the filtered variance 1e-15·P/r: at
-// P/r = 1e4 it is held to 1e-10.
+// Source: closed form P = q/2 + √(q²/4 + qr) for phi = 1 (golden ratio at q = r = 1) and its extension to
+// other phi, against scipy 1.10.1's solve_discrete_are. The catalogue's tolerance 1e-12 holds for the
+// equation's solution; the engine counts rounding, 1e-15 of P, as spread, which costs the filtered variance
+// 1e-15·P/r: at P/r = 1e4 it is held to 1e-10.
 TEST(Riccati, SteadyVariancesAndGainsAreTheClosedForms) {
   const Csv table = Csv::open("scalar_dare.csv");
   ASSERT_EQ(table.rows(), 11U);
