@@ -37,19 +37,43 @@ void* __wrap_aligned_alloc(std::size_t alignment, std::size_t size) {
 }
 }
 
-void* operator new(std::size_t size) {
-  if (void* block = std::malloc(size > 0 ? size : 1)) return block;
-  throw std::bad_alloc();
-}
-void* operator new(std::size_t size, std::align_val_t alignment) {
+namespace {
+
+void* take(std::size_t size) noexcept { return std::malloc(size > 0 ? size : 1); }
+void* take(std::size_t size, std::align_val_t alignment) noexcept {
   const auto a = static_cast<std::size_t>(alignment);
-  if (void* block = std::aligned_alloc(a, (size + a - 1) / a * a)) return block;
-  throw std::bad_alloc();
+  return std::aligned_alloc(a, (size + a - 1) / a * a);
+}
+void* need(void* block) {
+  if (!block) throw std::bad_alloc();
+  return block;
+}
+
+}  // namespace
+
+// All forms: a sanitizer's own would otherwise serve some of them, and object to free().
+void* operator new(std::size_t size) { return need(take(size)); }
+void* operator new[](std::size_t size) { return need(take(size)); }
+void* operator new(std::size_t size, std::align_val_t a) { return need(take(size, a)); }
+void* operator new[](std::size_t size, std::align_val_t a) { return need(take(size, a)); }
+void* operator new(std::size_t size, const std::nothrow_t&) noexcept { return take(size); }
+void* operator new[](std::size_t size, const std::nothrow_t&) noexcept { return take(size); }
+void* operator new(std::size_t size, std::align_val_t a, const std::nothrow_t&) noexcept {
+  return take(size, a);
+}
+void* operator new[](std::size_t size, std::align_val_t a, const std::nothrow_t&) noexcept {
+  return take(size, a);
 }
 void operator delete(void* block) noexcept { std::free(block); }
+void operator delete[](void* block) noexcept { std::free(block); }
 void operator delete(void* block, std::size_t) noexcept { std::free(block); }
+void operator delete[](void* block, std::size_t) noexcept { std::free(block); }
 void operator delete(void* block, std::align_val_t) noexcept { std::free(block); }
+void operator delete[](void* block, std::align_val_t) noexcept { std::free(block); }
 void operator delete(void* block, std::size_t, std::align_val_t) noexcept { std::free(block); }
+void operator delete[](void* block, std::size_t, std::align_val_t) noexcept { std::free(block); }
+void operator delete(void* block, const std::nothrow_t&) noexcept { std::free(block); }
+void operator delete[](void* block, const std::nothrow_t&) noexcept { std::free(block); }
 
 namespace steelyard::engine {
 
