@@ -48,8 +48,8 @@ int Births::switches(const Hypothesis& parent, const Occasion& o, std::array<Swi
   return count;
 }
 
-double Births::bear(const Hypothesis& parent, const Occasion& o, const Motion::WalkDensity& walk_density,
-                    double log_floor, Pool& children) {
+double Births::bear(const Hypothesis& parent, const Occasion& o, const Walks& walks, double log_floor,
+                    Pool& children) {
   double stays = 1.0;
   if (o.first) return stays;
   std::array<Switch, kConditions> to{};
@@ -65,9 +65,9 @@ double Births::bear(const Hypothesis& parent, const Occasion& o, const Motion::W
     } else if (s.to == Condition::kFrozen) {
       bear_frozen(parent, o, s, children);
     } else if (is_walk(from)) {
-      bear_walk(parent, o, s, walk_density, children);
+      bear_walk(parent, o, s, walks, children);
     } else {
-      bear_offset(parent, o, s, children);
+      bear_offset(parent, o, s, walks, children);
     }
   }
   return stays;
@@ -87,7 +87,8 @@ void Births::start_noise(Hypothesis& h, int channel) const {
 }
 
 // sound, stuck or frozen → a walk: o = e exactly as uncertain as the reading that it is started from.
-void Births::bear_offset(const Hypothesis& parent, const Occasion& o, const Switch& to, Pool& children) {
+void Births::bear_offset(const Hypothesis& parent, const Occasion& o, const Switch& to, const Walks& walks,
+                         Pool& children) {
   const auto& c = model_.channels[static_cast<std::size_t>(o.channel)];
   Hypothesis& child = child_of(parent, o, to, children);
   if (has_own(parent.conditions.of(o.channel))) drop_own(child, o.channel);
@@ -96,26 +97,31 @@ void Births::bear_offset(const Hypothesis& parent, const Occasion& o, const Swit
     // A censored reading fixes no offset: it starts from its prior, and the reading then bounds it.
     expected_.column.fill(0.0);
     add_own(child, o.channel, 0.0, prior_variance, expected_.column.data());
+    if (has_rate(to.to)) add_rate(child, o.channel, walks.first_rate[static_cast<std::size_t>(o.channel)]);
     child.log_weight += likelihood_.absorb(child, o).log_likelihood;
     return;
   }
   likelihood_.projector().project(child, o.channel, Condition::kSound, o.time_s, expected_);
+  if (!expected_.known()) return children.shrink(children.size() - 1);
   const double r = likelihood_.noise_variance(child.noise[o.channel], expected_.spec_variance);
   const double e = likelihood_.residual(o, expected_.mean);
   const double variance = expected_.variance + r;
   for (int i = 0; i < child.dim; ++i) expected_.column[static_cast<std::size_t>(i)] *= -1.0;
   add_own(child, o.channel, e, variance, expected_.column.data());
+  if (has_rate(to.to)) add_rate(child, o.channel, walks.first_rate[static_cast<std::size_t>(o.channel)]);
   child.log_weight += log_normal(e, variance + prior_variance);
 }
 
 // Between walks the state is kept; a faster one first makes one step of its own.
-void Births::bear_walk(const Hypothesis& parent, const Occasion& o, const Switch& to,
-                       const Motion::WalkDensity& walk_density, Pool& children) {
+void Births::bear_walk(const Hypothesis& parent, const Occasion& o, const Switch& to, const Walks& walks,
+                       Pool& children) {
   const auto j = static_cast<std::size_t>(o.channel);
   Hypothesis& child = child_of(parent, o, to, children);
   const auto from = static_cast<std::size_t>(parent.conditions.of(o.channel));
   const auto next = static_cast<std::size_t>(to.to);
-  if (next > from) child.p(child.own_at[j], child.own_at[j]) += walk_density[next][j] * o.gap_s;
+  if (has_rate(parent.conditions.of(o.channel))) drop_rate(child, o.channel);
+  if (next > from) child.p(child.own_at[j], child.own_at[j]) += walks.own[next][j] * o.gap_s;
+  if (has_rate(to.to)) add_rate(child, o.channel, walks.first_rate[j]);
   child.log_weight += likelihood_.absorb(child, o).log_likelihood;
 }
 

@@ -17,8 +17,8 @@ class Births {
   /// Appends to `children` what `parent` bears at this reading, weighted with it, from its state before the
   /// reading; children under log_floor are not built. Returns the probability that the channel's condition
   /// stays.
-  double bear(const Hypothesis& parent, const Occasion& occasion, const Motion::WalkDensity& walk_density,
-              double log_floor, Pool& children);
+  double bear(const Hypothesis& parent, const Occasion& occasion, const Walks& walks, double log_floor,
+              Pool& children);
 
   /// The most children that one parent can have at one reading.
   static constexpr int kMostChildren = kConditions + 1;
@@ -31,9 +31,10 @@ class Births {
   [[nodiscard]] double rate(Condition from, Condition to, const ChannelModel& channel) const;
   int switches(const Hypothesis& parent, const Occasion& occasion, std::array<Switch, kConditions>& out,
                double& stays) const;
-  void bear_offset(const Hypothesis& parent, const Occasion& o, const Switch& to, Pool& children);
-  void bear_walk(const Hypothesis& parent, const Occasion& o, const Switch& to,
-                 const Motion::WalkDensity& walk_density, Pool& children);
+  void bear_offset(const Hypothesis& parent, const Occasion& o, const Switch& to, const Walks& walks,
+                   Pool& children);
+  void bear_walk(const Hypothesis& parent, const Occasion& o, const Switch& to, const Walks& walks,
+                 Pool& children);
   void bear_stuck(const Hypothesis& parent, const Occasion& o, const Switch& to, Pool& children) const;
   void bear_frozen(const Hypothesis& parent, const Occasion& o, const Switch& to, Pool& children) const;
   void bear_sound(const Hypothesis& parent, const Occasion& o, const Switch& to, Pool& children);

@@ -53,6 +53,11 @@ double Collector::normalise(Pool& pool, int budget, double floor) {
     if (std::isnan(pool[i].log_weight)) pool[i].log_weight = -INFINITY;
     top = std::max(top, pool[i].log_weight);
   }
+  // What no hypothesis can explain cannot choose between them.
+  if (!std::isfinite(top)) {
+    for (int i = 0; i < pool.size(); ++i) pool[i].log_weight = 0.0;
+    top = 0.0;
+  }
   double sum = 0.0;
   for (int i = 0; i < pool.size(); ++i) sum += std::exp(pool[i].log_weight - top);
   const double total = top + std::log(sum);

@@ -92,7 +92,7 @@ void Posterior::bear_children(const Occasion& o) {
   const auto& parents = collector.heaviest(now, model->options.parents);
   const double log_floor = std::log(model->options.weight_floor);
   for (const int parent : parents) {
-    const double stays = births.bear(now[parent], o, walk_density, log_floor, children);
+    const double stays = births.bear(now[parent], o, walks, log_floor, children);
     now[parent].log_weight += std::log(std::max(stays, 1e-300));
   }
 }

@@ -21,7 +21,7 @@ Layout::Layout(const Model& model)
   for (int j = 0; j < channels; ++j)
     if (model.channels[static_cast<std::size_t>(j)].bias_sd > 0.0)
       bias_at[static_cast<std::size_t>(j)] = fixed++;
-  max_dim = fixed + channels;
+  max_dim = fixed + 2 * channels;
 }
 
 Pool::Pool(const Layout& layout, int capacity)
@@ -104,7 +104,7 @@ void Pool::swap_items(int i, int k) {
 
 namespace {
 
-// Index in z at which the channel's own number belongs: after those of the channels before it.
+// Index in z at which the numbers of the first channel from `channel` on that has any begin.
 int place_of(const Hypothesis& h, int channel) {
   for (int j = channel; j < kMaxChannels; ++j)
     if (h.own_at[static_cast<std::size_t>(j)] >= 0) return h.own_at[static_cast<std::size_t>(j)];
@@ -116,10 +116,8 @@ void shift_places(Hypothesis& h, int from, int by) {
     if (at >= from) at = static_cast<std::int16_t>(at + by);
 }
 
-}  // namespace
-
-void add_own(Hypothesis& h, int channel, double mean, double variance, const double* cross) {
-  const int at = place_of(h, channel);
+// A new element of z at index `at`; `cross` has its covariance with the old z.
+void insert(Hypothesis& h, int at, double mean, double variance, const double* cross) {
   const int old = h.dim;
   const int dim = old + 1;
   // From the last row up, so that no element is overwritten before it has moved.
@@ -143,20 +141,40 @@ void add_own(Hypothesis& h, int channel, double mean, double variance, const dou
   for (int i = dim - 1; i > at; --i) h.mean[i] = h.mean[i - 1];
   h.mean[at] = mean;
   shift_places(h, at, 1);
-  h.own_at[static_cast<std::size_t>(channel)] = static_cast<std::int16_t>(at);
   h.dim = dim;
 }
 
-void drop_own(Hypothesis& h, int channel) {
-  const int at = h.own_at[static_cast<std::size_t>(channel)];
+void erase(Hypothesis& h, int at) {
   const int old = h.dim;
   const int dim = old - 1;
   for (int i = 0; i < dim; ++i)
     for (int k = 0; k < dim; ++k) h.cov[i * dim + k] = h.cov[(i + (i >= at)) * old + k + (k >= at)];
   for (int i = at; i < dim; ++i) h.mean[i] = h.mean[i + 1];
-  h.own_at[static_cast<std::size_t>(channel)] = -1;
-  shift_places(h, at, -1);
+  shift_places(h, at + 1, -1);
   h.dim = dim;
+}
+
+}  // namespace
+
+void add_own(Hypothesis& h, int channel, double mean, double variance, const double* cross) {
+  const int at = place_of(h, channel);
+  insert(h, at, mean, variance, cross);
+  h.own_at[static_cast<std::size_t>(channel)] = static_cast<std::int16_t>(at);
+}
+
+void add_rate(Hypothesis& h, int channel, double variance) {
+  const std::array<double, kMaxDim> none{};
+  insert(h, h.own_at[static_cast<std::size_t>(channel)] + 1, 0.0, variance, none.data());
+}
+
+void drop_rate(Hypothesis& h, int channel) { erase(h, h.own_at[static_cast<std::size_t>(channel)] + 1); }
+
+void drop_own(Hypothesis& h, int channel) {
+  const auto j = static_cast<std::size_t>(channel);
+  const int at = h.own_at[j];
+  const int count = place_of(h, channel + 1) - at;
+  for (int i = 0; i < count; ++i) erase(h, at);
+  h.own_at[j] = -1;
 }
 
 void merge(Hypothesis& into, const Hypothesis& from, int channels) {

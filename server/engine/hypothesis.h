@@ -23,7 +23,7 @@ struct Layout {
   int core = 0;   ///< states + inputs: what moves by the machine's law
   int fixed = 0;  ///< core + biases: what every hypothesis carries
   int channels = 0;
-  int max_dim = 0;                          ///< fixed + channels
+  int max_dim = 0;                          ///< fixed + 2 · channels
   std::array<int, kMaxChannels> bias_at{};  ///< index in z of a channel's standing bias, −1: none
 };
 
@@ -51,8 +51,20 @@ class Conditions {
 [[nodiscard]] constexpr bool is_walk(Condition c) {
   return c == Condition::kCreeping || c == Condition::kOffset || c == Condition::kWandering;
 }
+/// A creeping channel's offset has a rate of its own, so that a steady drift costs nothing to explain.
+[[nodiscard]] constexpr bool has_rate(Condition c) { return c == Condition::kCreeping; }
 /// Does a channel in this condition carry a number of its own in z (an offset, or a stuck level)?
 [[nodiscard]] constexpr bool has_own(Condition c) { return is_walk(c) || c == Condition::kStuck; }
+
+/// Most elements of z: core, biases, two numbers a channel.
+inline constexpr int kMaxDim = kMaxStates + kMaxInputs + 3 * kMaxChannels;
+
+/// How the channels' own numbers move by themselves, in the channels' units.
+struct Walks {
+  std::array<std::array<double, kMaxChannels>, kConditions> own{};  ///< spectral density, unit²/s
+  std::array<double, kMaxChannels> rate{};        ///< of a creeping channel's rate, (unit/s)²/s
+  std::array<double, kMaxChannels> first_rate{};  ///< variance of that rate at its birth, (unit/s)²
+};
 
 struct Hypothesis {
   double log_weight = 0.0;
@@ -115,7 +127,10 @@ class Pool {
 /// Gives channel's own number its place in z, with the given moments; `cross` has the covariance with the old
 /// z (dim entries). The channel must not have one yet.
 void add_own(Hypothesis& h, int channel, double mean, double variance, const double* cross);
-/// Takes a channel's own number out of z (marginalises it).
+/// Gives the channel's own number a rate, right behind it in z, with mean 0 and independent of the rest.
+void add_rate(Hypothesis& h, int channel, double variance);
+void drop_rate(Hypothesis& h, int channel);
+/// Takes all of a channel's own numbers out of z (marginalises them).
 void drop_own(Hypothesis& h, int channel);
 
 /// Moment-matched merge of `from` into `into` (same key); weights add up.

@@ -134,6 +134,8 @@ Absorbed Likelihood::absorb_censored(Hypothesis& h, const Occasion& o, double r)
 Absorbed Likelihood::absorb(Hypothesis& h, const Occasion& o) {
   const auto j = static_cast<std::size_t>(o.channel);
   projector_.project(h, o.channel, h.conditions.of(o.channel), o.time_s, expected_);
+  // A hypothesis that expects nothing takes the reading for as likely as a stray, and learns nothing from it.
+  if (!expected_.known()) return {std::log(o.elsewhere), 0.0, 0.0};
   Gamma& g = h.noise[o.channel];
   const double s = expected_.variance;
   const double r = noise_variance(g, expected_.spec_variance);

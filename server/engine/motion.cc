@@ -126,10 +126,20 @@ void Motion::linearise(const Hypothesis& h, double time_s, double dt_s) {
   CoreVector drive = CoreVector::Zero(n);
   CoreVector up(n);
   CoreVector down(n);
+  // Where a law has no value (the root of a level below zero), the mean's stands in, and rest for that.
+  CoreVector centre(n);
+  rates(mean, time_s, centre);
+  centre = centre.unaryExpr([](double v) { return std::isfinite(v) ? v : 0.0; });
+  const auto stand_in = [&](CoreVector& v) {
+    for (int i = 0; i < n; ++i)
+      if (!std::isfinite(v(i))) v(i) = centre(i);
+  };
   const double reach = std::sqrt(static_cast<double>(n));
   for (int k = 0; k < n; ++k) {
     rates(mean + reach * root.col(k), time_s, up);
     rates(mean - reach * root.col(k), time_s, down);
+    stand_in(up);
+    stand_in(down);
     slope.col(k) = (up - down) / (2.0 * reach);
     drive += (up + down) / (2.0 * n);
   }
@@ -138,7 +148,7 @@ void Motion::linearise(const Hypothesis& h, double time_s, double dt_s) {
   fill(local_, slope, drive, dt_s);
 }
 
-void Motion::predict(std::span<Hypothesis> group, const WalkDensity& walk_density) {
+void Motion::predict(std::span<Hypothesis> group, const Walks& walks) {
   if (affine_) {
     for (Hypothesis& h : group) apply(h, *affine_gap_);
   } else {
@@ -155,15 +165,31 @@ void Motion::predict(std::span<Hypothesis> group, const WalkDensity& walk_densit
       for (Hypothesis& h : group) apply(h, local_);
     }
   }
-  for (Hypothesis& h : group) walk(h, walk_density);
+  for (Hypothesis& h : group) walk(h, walks);
 }
 
-void Motion::walk(Hypothesis& h, const WalkDensity& walk_density) const {
+void Motion::walk(Hypothesis& h, const Walks& walks) const {
   for (int j = 0; j < layout_.channels; ++j) {
     const auto u = static_cast<std::size_t>(j);
     const int at = h.own_at[u];
-    if (at >= 0) h.p(at, at) += walk_density[static_cast<std::size_t>(h.conditions.of(j))][u] * gap_s_;
+    if (at < 0) continue;
+    const Condition condition = h.conditions.of(j);
+    if (has_rate(condition)) drift(h, at, walks.rate[u]);
+    h.p(at, at) += walks.own[static_cast<std::size_t>(condition)][u] * gap_s_;
   }
+}
+
+// o moves by its rate, which stands behind it, and the rate by white noise: the discretisation is that of
+// constant velocity with white acceleration.
+void Motion::drift(Hypothesis& h, int at, double rate_density) const {
+  const double dt = gap_s_;
+  h.mean[at] += dt * h.mean[at + 1];
+  for (int k = 0; k < h.dim; ++k) h.p(at, k) += dt * h.p(at + 1, k);
+  for (int k = 0; k < h.dim; ++k) h.p(k, at) += dt * h.p(k, at + 1);
+  h.p(at, at) += rate_density * dt * dt * dt / 3.0;
+  h.p(at, at + 1) += rate_density * dt * dt / 2.0;
+  h.p(at + 1, at) += rate_density * dt * dt / 2.0;
+  h.p(at + 1, at + 1) += rate_density * dt;
 }
 
 void Motion::apply(Hypothesis& h, const Gap& gap) {

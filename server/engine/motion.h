@@ -20,10 +20,8 @@ class Motion {
   /// Sets the gap that the next calls of predict() move over. Bit i of unknown_inputs: input i is not known.
   void prepare(TimeNs from_ns, TimeNs to_ns, unsigned unknown_inputs);
 
-  /// Moves hypotheses that differ in their machine modes alone over the prepared gap. walk_density[c][j]:
-  /// spectral density of channel j's own number under condition c, unit²/s.
-  using WalkDensity = std::array<std::array<double, kMaxChannels>, kConditions>;
-  void predict(std::span<Hypothesis> group, const WalkDensity& walk_density);
+  /// Moves hypotheses that differ in their machine modes alone over the prepared gap.
+  void predict(std::span<Hypothesis> group, const Walks& walks);
 
   [[nodiscard]] bool affine() const { return affine_; }
 
@@ -39,7 +37,8 @@ class Motion {
   void rates(const CoreVector& v, double time_s, CoreVector& out) const;
   void linearise(const Hypothesis& h, double time_s, double dt_s);
   void apply(Hypothesis& h, const Gap& gap);
-  void walk(Hypothesis& h, const WalkDensity& walk_density) const;
+  void walk(Hypothesis& h, const Walks& walks) const;
+  void drift(Hypothesis& h, int at, double rate_density) const;
 
   const Model& model_;
   const Layout& layout_;

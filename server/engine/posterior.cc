@@ -13,7 +13,10 @@ namespace steelyard::engine {
 namespace {
 
 // Walk speeds of creeping, offset, wandering and stuck, in datasheet sd per √R (engine.md §2).
-constexpr std::array<double, kConditions> kWalk{0.0, 0.1, 2.0, 30.0, 0.05, 0.0};
+constexpr std::array<double, kConditions> kWalk{0.0, 0.02, 2.0, 30.0, 0.05, 0.0};
+// A creeping channel's rate: its size at first in datasheet sd per R, and its own walk in that per √R.
+constexpr double kFirstRate = 1.0;
+constexpr double kRateWalk = 0.1;
 
 int standing_capacity(const Options& o) { return 3 * o.max_hypotheses + o.parents * Births::kMostChildren; }
 
@@ -73,7 +76,7 @@ Posterior::Posterior(const Posterior& other)
       now(other.now),
       next(layout, other.next.capacity()),
       children(layout, other.children.capacity()),
-      walk_density(other.walk_density),
+      walks(other.walks),
       channels(other.channels),
       inputs(other.inputs),
       mode_on(other.mode_on),
@@ -87,8 +90,12 @@ void Posterior::refresh_walks(int channel) {
   const auto j = static_cast<std::size_t>(channel);
   for (std::size_t c = 0; c < kConditions; ++c) {
     const double step = kWalk[c] * channels[j].spec_sd;
-    walk_density[c][j] = step * step / model->response_s;
+    walks.own[c][j] = step * step / model->response_s;
   }
+  const double first = kFirstRate * channels[j].spec_sd / model->response_s;
+  const double change = kRateWalk * channels[j].spec_sd / model->response_s;
+  walks.first_rate[j] = first * first;
+  walks.rate[j] = change * change / model->response_s;
 }
 
 void Posterior::start(TimeNs t) {
@@ -156,7 +163,7 @@ void Posterior::predict_next(TimeNs t) {
     const TimeNs to = next_expiry(from, t);
     motion.prepare(from, to, unknown_inputs(from));
     for (int begin = 0; begin < next.size(); begin = next.group_end(begin))
-      motion.predict(next.slice(begin, next.group_end(begin)), walk_density);
+      motion.predict(next.slice(begin, next.group_end(begin)), walks);
     from = to;
   }
 }

@@ -69,7 +69,7 @@ struct Posterior {
   Pool now;
   Pool next;
   Pool children;
-  Motion::WalkDensity walk_density{};
+  Walks walks{};
   std::vector<ChannelMemory> channels;
   std::vector<InputMemory> inputs;
   std::array<bool, kModes> mode_on{};

@@ -47,8 +47,10 @@ void Projector::regress(const Hypothesis& h, Formula& formula, double modulo, do
     return formula.evaluate({v.data(), states}, {v.data() + states, inputs}, time_s);
   };
   const double centre = read(mean);
+  // Where a formula has no value (the root of a level below zero), the centre's stands in.
   const auto about_centre = [&](double value) {
     const double step = value - centre;
+    if (!std::isfinite(step)) return 0.0;
     return modulo > 0.0 ? std::remainder(step, modulo) : step;
   };
   const double reach = std::sqrt(static_cast<double>(n));

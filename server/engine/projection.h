@@ -3,20 +3,21 @@
 #pragma once
 
 #include <array>
+#include <cmath>
 
 #include "engine/discretise.h"
 #include "engine/hypothesis.h"
 
 namespace steelyard::engine {
 
-inline constexpr int kMaxDim = kMaxCore + 2 * kMaxChannels;
-
 struct Projection {
   double mean = 0.0;                     ///< of the noiseless reading
   double variance = 0.0;                 ///< s: of the noiseless reading
   double spec_variance = 1.0;            ///< datasheet noise with quantisation: sd² + resolution²/12
   std::array<double, kMaxDim> column{};  ///< covariance of z with the noiseless reading
-  CoreVector slope;                      ///< effective row over [states | inputs]; empty for stuck
+  /// False where the reading's formula has no finite value at the mean: then nothing is expected.
+  [[nodiscard]] bool known() const { return std::isfinite(mean) && std::isfinite(variance); }
+  CoreVector slope;  ///< effective row over [states | inputs]; empty for stuck
 };
 
 class Projector {

@@ -44,7 +44,7 @@ struct Nursery {
       occasion.repeated = true;
       occasion.last_value = occasion.value;
     }
-    for (std::size_t c = 0; c < kConditions; ++c) density[c].fill(0.1 * static_cast<double>(c));
+    for (std::size_t c = 0; c < kConditions; ++c) density.own[c].fill(0.1 * static_cast<double>(c));
   }
   void bear() { stays = births->bear(*parent, occasion, density, kFloor, *children); }
 
@@ -53,7 +53,7 @@ struct Nursery {
   std::unique_ptr<Likelihood> likelihood;
   std::unique_ptr<Births> births;
   std::unique_ptr<Pool> children;
-  Motion::WalkDensity density{};
+  Walks density{};
   Hypothesis* parent = nullptr;
   Occasion occasion;
   double stays = 0.0;
@@ -137,7 +137,7 @@ double log_likelihood_in(Nursery& n, Condition condition) {
   Hypothesis& h = copy.append_copy(*n.parent);
   h.conditions.set(kChannel, condition);
   const int at = h.own_at[kChannel];
-  if (condition > from) h.p(at, at) += n.density[static_cast<std::size_t>(condition)][kChannel] * kGapS;
+  if (condition > from) h.p(at, at) += n.density.own[static_cast<std::size_t>(condition)][kChannel] * kGapS;
   const Row row = row_of(*n.scene, h, kChannel);
   return log_normal(n.occasion.value - row.on_z.dot(mean_of(h)) - row.constant,
                     row.on_z.dot(covariance_of(h) * row.on_z) + v.r);

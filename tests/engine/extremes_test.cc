@@ -168,5 +168,42 @@ TEST(Extremes, NothingReadYet) {
   EXPECT_EQ(e.channels[0].age_s, -1.0);
 }
 
+// Formulas that have no value everywhere: the root of a level that the Gaussian also believes below zero.
+class Root : public Formula {
+ public:
+  explicit Root(double factor) : factor_(factor) {}
+  double evaluate(std::span<const double> states, std::span<const double>, double) override {
+    return factor_ * std::sqrt(states[0]);
+  }
+
+ private:
+  double factor_;
+};
+
+TEST(Extremes, FormulasWithoutAValueLeaveTheEngineSane) {
+  auto model = std::make_shared<Model>();
+  model->states = {{"level", "m", 0.5, 1.0, 0.05, {}, Law{std::make_shared<Root>(-0.1)}}};
+  ChannelModel flow;
+  flow.name = "flow";
+  flow.reads = std::make_shared<Root>(1.0);
+  flow.sd = 0.05;
+  flow.lo = -1.0;
+  flow.hi = 5.0;
+  ChannelModel gauge = flow;
+  gauge.name = "gauge";
+  gauge.reads = AffineForm{{1.0}, {}, 0.0};
+  model->channels = {flow, gauge};
+  set_defaults(*model, 10.0);
+  Engine engine(model);
+  Random random(5);
+  for (int i = 0; i < 400; ++i) {
+    const TimeNs t = i * 1'000'000'000LL;
+    const double level = i < 200 ? 0.04 : -0.3;  // the gauge may read below zero, where the law has no value
+    engine.read(t, 1, level + 0.05 * random.normal(), Quality::kGood);
+    engine.read(t, 0, std::sqrt(std::max(level, 0.0)) + 0.05 * random.normal(), Quality::kGood);
+    ASSERT_NO_FATAL_FAILURE(expect_sane(engine, t)) << i;
+  }
+}
+
 }  // namespace
 }  // namespace steelyard::engine

@@ -146,5 +146,33 @@ TEST(PoolOfHypotheses, CopyIsIndependent) {
   EXPECT_NE(copy[0].noise[0].a, scene.pool[0].noise[0].a);
 }
 
+// The rate stands right behind its offset, and all of a channel's numbers go together.
+TEST(OwnNumbers, ARateComesAndGoesWithItsOffset) {
+  constexpr std::uint64_t kSeed = 22;
+  Random random(kSeed);
+  Scene scene(random_model(random, 2, 0, 3));
+  Hypothesis& h = scene.random_hypothesis(random);
+  for (int j = 0; j < 3; ++j)
+    if (h.own_at[static_cast<std::size_t>(j)] >= 0) drop_own(h, j);
+  const std::array<double, kMaxDim> none{};
+  add_own(h, 2, 7.0, 3.0, none.data());
+  add_own(h, 0, 5.0, 2.0, none.data());
+  add_rate(h, 0, 0.25);
+  const int at = h.own_at[0];
+  EXPECT_EQ(h.own_at[2], at + 2);
+  EXPECT_EQ(h.mean[at + 1], 0.0);
+  EXPECT_EQ(h.p(at + 1, at + 1), 0.25);
+  EXPECT_EQ(h.mean[at + 2], 7.0);
+  const int dim = h.dim;
+  drop_rate(h, 0);
+  EXPECT_EQ(h.dim, dim - 1);
+  EXPECT_EQ(h.own_at[2], at + 1);
+  add_rate(h, 0, 0.25);
+  drop_own(h, 0);
+  EXPECT_EQ(h.dim, dim - 2);
+  EXPECT_EQ(h.own_at[0], -1);
+  EXPECT_EQ(h.mean[h.own_at[2]], 7.0);
+}
+
 }  // namespace
 }  // namespace steelyard::engine

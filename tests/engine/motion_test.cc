@@ -38,8 +38,8 @@ TEST(Motion, FormulaThatIsAffineMovesAsTheAffineLaw) {
     Scene general(model);
     Hypothesis& a = affine.random_hypothesis(random, {{1, Condition::kOffset}});
     Hypothesis& b = general.pool.append_copy(a);
-    Motion::WalkDensity density{};
-    density[2].fill(0.3);
+    Walks density{};
+    density.own[2].fill(0.3);
     for (Scene* scene : {&affine, &general}) {
       Motion motion(*scene->model, scene->layout);
       EXPECT_EQ(motion.affine(), scene == &affine);
@@ -61,8 +61,8 @@ TEST(Motion, WalksAndModesSpreadTheirOwnPart) {
   const int own = usual.own_at[0];
   const double state_before = usual.p(0, 0);
   const double own_before = usual.p(own, own);
-  Motion::WalkDensity density{};
-  density[static_cast<std::size_t>(Condition::kWandering)][0] = 0.25;
+  Walks density{};
+  density.own[static_cast<std::size_t>(Condition::kWandering)][0] = 0.25;
   Motion motion(*scene.model, scene.layout);
   motion.prepare(0, 4 * kSecond, 0);
   motion.predict({&usual, 2}, density);

@@ -52,7 +52,7 @@ TEST(PosteriorSet, CarriesOnlyTheOffsetsThatItsConditionsNeed) {
       int own = 0;
       for (int j = 0; j < suite::kChannels; ++j) {
         ASSERT_EQ(has_own(h.conditions.of(j)), h.own_at[static_cast<std::size_t>(j)] >= 0);
-        own += has_own(h.conditions.of(j));
+        own += has_own(h.conditions.of(j)) + has_rate(h.conditions.of(j));
       }
       ASSERT_EQ(h.dim, posterior.layout.fixed + own);
     }
