@@ -5,7 +5,7 @@
 #     plant does;
 #   - within each fault the channel is found not sound with a probability of 0.95 at least.
 # It guards against getting worse and proves no more: the basin's rig was tuned on this log, and other seeds
-# of the same script do not pass (deploy/demo/README.md has the table).
+# of the same script need not pass (deploy/demo/README.md has the table).
 # Usage: verdicts.sh STEELYARD FOLDER_OF_THE_DEMO EVENTS_FILE FOLDER_FOR_OUTPUT NAME SHARE
 set -euo pipefail
 steelyard=$1 demo=$2 events=$3 out=$4 name=$5 share=$6
