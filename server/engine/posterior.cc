@@ -13,7 +13,7 @@ namespace steelyard::engine {
 namespace {
 
 // Walk speeds of creeping, offset, wandering and stuck, in datasheet sd per √R (engine.md §2).
-constexpr std::array<double, kConditions> kWalk{0.0, 0.02, 2.0, 30.0, 0.05, 0.0};
+constexpr std::array<double, kConditions> kWalk{0.0, 0.02, 3.5, 30.0, 0.05, 0.0};
 // A creeping channel's rate: its size at first in datasheet sd per R, and its own walk in that per √R.
 constexpr double kFirstRate = 1.0;
 constexpr double kRateWalk = 0.1;
