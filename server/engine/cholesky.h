@@ -5,6 +5,7 @@
 #include <cmath>
 
 #include "engine/discretise.h"
+#include "engine/hypothesis.h"
 
 namespace steelyard::engine {
 
@@ -34,5 +35,19 @@ void divide_by_lower(Row&& x, const CoreMatrix& l) {
     x(k) = l(k, k) > 0.0 ? sum / l(k, k) : 0.0;
   }
 }
+
+/// What sigma points are laid by: the mean of a hypothesis's core and the root of its covariance.
+struct CoreGaussian {
+  CoreGaussian(const Hypothesis& h, int core) : mean(core) {
+    CoreMatrix cov(core, core);
+    for (int i = 0; i < core; ++i) {
+      mean(i) = h.mean[i];
+      for (int k = 0; k < core; ++k) cov(i, k) = h.p(i, k);
+    }
+    cholesky(cov, root);
+  }
+  CoreVector mean;
+  CoreMatrix root;
+};
 
 }  // namespace steelyard::engine

@@ -158,7 +158,6 @@ void Posterior::remember(TimeNs t, const Occasion& o) {
   memory.fused_any = true;
   memory.fused_at = t;
   memory.last_value = o.value;
-  memory.last_censored = o.censoring != Censoring::kNone;
   if (!model->channels[static_cast<std::size_t>(o.channel)].sd_formula) return;
   const int heaviest = collector.heaviest(now, 1).front();
   memory.spec_sd = std::sqrt(likelihood.projector().spec_variance(now[heaviest], o.channel, o.time_s));

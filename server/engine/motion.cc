@@ -114,14 +114,9 @@ void Motion::rates(const CoreVector& v, double time_s, CoreVector& out) const {
 // Fills local_ with one step of the law as the hypothesis's Gaussian sees it.
 void Motion::linearise(const Hypothesis& h, double time_s, double dt_s) {
   const int n = layout_.core;
-  CoreVector mean(n);
-  CoreMatrix cov(n, n);
-  for (int i = 0; i < n; ++i) {
-    mean(i) = h.mean[i];
-    for (int k = 0; k < n; ++k) cov(i, k) = h.p(i, k);
-  }
-  CoreMatrix root;
-  cholesky(cov, root);
+  const CoreGaussian core(h, n);
+  const CoreVector& mean = core.mean;
+  const CoreMatrix& root = core.root;
   CoreMatrix slope(n, n);
   CoreVector drive = CoreVector::Zero(n);
   CoreVector up(n);

@@ -18,7 +18,6 @@ namespace steelyard::engine {
 struct ChannelMemory {
   bool fused_any = false;
   double last_value = 0.0;  ///< of the last fused reading
-  bool last_censored = false;
   TimeNs fused_at = 0;
   bool seen_any = false;
   TimeNs seen_at = 0;  ///< of the last usable reading, fused or the same measurement again

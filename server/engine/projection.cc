@@ -35,14 +35,9 @@ void Projector::regress(const Hypothesis& h, Formula& formula, double modulo, do
   const int n = layout_.core;
   const auto states = static_cast<std::size_t>(layout_.states);
   const auto inputs = static_cast<std::size_t>(n) - states;
-  CoreVector mean(n);
-  CoreMatrix cov(n, n);
-  for (int i = 0; i < n; ++i) {
-    mean(i) = h.mean[i];
-    for (int k = 0; k < n; ++k) cov(i, k) = h.p(i, k);
-  }
-  CoreMatrix root;
-  cholesky(cov, root);
+  const CoreGaussian core(h, n);
+  const CoreVector& mean = core.mean;
+  const CoreMatrix& root = core.root;
   const auto read = [&](const CoreVector& v) {
     return formula.evaluate({v.data(), states}, {v.data() + states, inputs}, time_s);
   };
