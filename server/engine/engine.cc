@@ -185,8 +185,8 @@ void Engine::set_input(TimeNs t, int input, double value, bool good) {
   impl_->set_input(t, input, value, good);
 }
 
-Fate Engine::read(TimeNs t, int channel, double value, Quality quality) {
-  return impl_->read(t, channel, value, quality);
+Fate Engine::read(TimeNs t, int channel, std::span<const double> values, Quality quality, int /*source*/) {
+  return impl_->read(t, channel, values.front(), quality);
 }
 
 TimeNs Engine::time() const { return impl_->time; }

@@ -11,6 +11,7 @@
 
 #include <cstdint>
 #include <memory>
+#include <span>
 #include <vector>
 
 #include "engine/estimate.h"
@@ -41,7 +42,12 @@ class Engine {
   /// Times must not fall; values must be finite (both are the caller's to check). A value that is not good
   /// makes the input unknown within its range from t on.
   void set_input(TimeNs t, int input, double value, bool good);
-  Fate read(TimeNs t, int channel, double value, Quality quality);
+  /// `values` has one value for each part of the channel. `source` says who sent it: channels that last came
+  /// from one source can freeze together.
+  Fate read(TimeNs t, int channel, std::span<const double> values, Quality quality, int source = 0);
+  Fate read(TimeNs t, int channel, double value, Quality quality) {
+    return read(t, channel, std::span<const double>(&value, 1), quality);
+  }
 
   /// The posterior at t ≥ time(), extrapolated without changing this engine's posterior (scratch storage is
   /// used, hence not const). Reuses the storage of `out`.

@@ -20,6 +20,7 @@ using TimeNs = std::int64_t;
 inline constexpr int kMaxStates = 16;
 inline constexpr int kMaxInputs = 8;
 inline constexpr int kMaxChannels = 32;
+inline constexpr int kMaxParts = 32;  ///< of all channels together; a scalar channel is one
 
 /// How a channel's reading relates to the machine. "silent" is reported beside these, see ChannelEstimate.
 enum class Condition : std::uint8_t { kSound, kCreeping, kOffset, kWandering, kStuck, kFrozen };
@@ -71,8 +72,8 @@ struct InputModel {
   double hi = 0.0;
 };
 
-struct ChannelModel {
-  std::string name;
+/// One number of what a channel reads.
+struct PartModel {
   std::string unit;
   Law reads;
   double sd = 1.0;                      ///< > 0: repeatability, used when sd_formula is empty
@@ -80,20 +81,48 @@ struct ChannelModel {
   double bias_sd = 0.0;                 ///< ≥ 0: standing calibration and mounting uncertainty
   double lo = 0.0;                      ///< range
   double hi = 0.0;
-  double resolution = 0.0;       ///< step of the reading; 0: not declared (sd/100 where one is needed)
-  std::optional<double> cutoff;  ///< readings below are censored: the true value lies somewhere below
-  double modulo = 0.0;           ///< full turn of an angle; 0: not an angle
-  double period_s = 0.0;         ///< time between two measurements; 0: not declared
+  double resolution = 0.0;   ///< step of the reading; 0: not declared (sd/100 where one is needed)
+  double offset_size = 1.0;  ///< B: size that offsets can have
+};
+
+/// A channel that sends only when its value has moved by `deadband`, or when `heartbeat_s` has passed.
+struct OnChange {
+  double deadband = 0.0;     ///< > 0
+  double heartbeat_s = 0.0;  ///< 0: it may be quiet for ever
+};
+
+/// A scalar channel is one part; a vector channel has further ones, read at once and with one condition.
+struct ChannelModel : PartModel {
+  std::string name;
+  std::vector<PartModel> others;         ///< parts after the first; empty: a scalar channel
+  std::vector<double> part_correlation;  ///< of the noise of parts (1,2), (1,3) … (2,3) …; empty: none
+  std::optional<double> cutoff;          ///< readings below are censored: the true value lies somewhere below
+  double modulo = 0.0;                   ///< full turn of an angle; 0: not an angle (scalar channels)
+  double correlation = 0.0;              ///< of the noise of readings one period apart, in [0, 1) (scalar)
+  std::optional<OnChange> on_change;     ///< silence says that the value has not moved (scalar)
+  double time_sd_s = 0.0;                ///< ≥ 0: uncertainty of the time stamps
+  double period_s = 0.0;                 ///< time between two measurements; 0: not declared
   double delay_s = 0.0;          ///< a reading stamped t tells of t − delay_s; the timeline applies it
-  double uncertain_ratio = 0.5;  ///< P(regular) given quality `uncertain`; the rest is uniform over the range
+  double uncertain_ratio = 0.5;  ///< P(regular) given quality `uncertain`; the rest is uniform
   double fails_every_s = 30 * 86400.0;
   double recovers_in_s = 1000.0;
   double changes_in_s = 10.0;  ///< mean time to each other unsound condition
   double memory_s = 5.0;       ///< half-life of what was learned about the noise
   double strays = 0.002;       ///< probability that a reading is a wild value
-  double offset_size = 1.0;    ///< B: size that offsets can have
   bool live_zero = false;  ///< 4-20 mA: the timeline decodes NAMUR NE 43 failure signals (limits from memory)
   double prior_readings = 10.0;  ///< 2·a0: how many readings the datasheet's sd is worth
+
+  [[nodiscard]] int parts() const { return 1 + static_cast<int>(others.size()); }
+  [[nodiscard]] const PartModel& part(int i) const {
+    return i == 0 ? *this : others[static_cast<std::size_t>(i - 1)];
+  }
+};
+
+/// Channels whose faults may have one cause: the share β of a channel's faults strikes all of them together
+/// (the beta factor of IEC 61508-6).
+struct CommonCause {
+  std::vector<int> channels;
+  double share = 0.1;
 };
 
 /// A machine mode beside the usual one: entered every `every_s`, left after `last_s`, unrest × `times`.
@@ -121,7 +150,9 @@ struct Model {
   std::vector<StateModel> states;
   std::vector<InputModel> inputs;
   std::vector<ChannelModel> channels;
-  double response_s = 1.0;  ///< R: time in which the machine can move noticeably
+  std::vector<CommonCause> common;
+  double freeze_share = 0.1;  ///< share of freezes that strike all channels of one source together
+  double response_s = 1.0;    ///< R: time in which the machine can move noticeably
   ModeModel jolt;
   ModeModel still{true, 20.0, 10.0, 0.1};
   Options options;
