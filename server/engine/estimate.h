@@ -51,10 +51,10 @@ struct ChannelEstimate {
 /// One channel's part in a hypothesis that has it unsound (a vector channel: one finding for each part).
 struct Finding {
   int channel = 0;
-  int part = 0;
   Condition condition = Condition::kSound;
   double offset = 0.0;  ///< size for the walks, level for stuck and frozen
   double offset_sd = 0.0;
+  int part = 0;
   TimeNs since_ns = 0;  ///< when the channel stopped being sound, posterior mean
 };
 

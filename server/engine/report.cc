@@ -243,7 +243,7 @@ void report_explanations(const Pool& pool, int channels, std::vector<Explanation
       const int at = h.own_at[static_cast<std::size_t>(j)];
       const Condition condition = h.conditions.of(j);
       if (condition == Condition::kSound) continue;
-      found.findings.push_back({j, 0, condition, at >= 0 ? h.mean[at] : 0.0,
+      found.findings.push_back({j, condition, at >= 0 ? h.mean[at] : 0.0,
                                 at >= 0 ? std::sqrt(std::max(h.p(at, at), 0.0)) : 0.0, 0});
     }
     out.push_back(std::move(found));
