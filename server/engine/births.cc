@@ -6,7 +6,6 @@
 #include <algorithm>
 #include <cmath>
 
-#include "engine/normal.h"
 #include "engine/repeats.h"
 
 namespace steelyard::engine {
@@ -20,8 +19,14 @@ double Births::rate(Condition from, Condition to, const ChannelModel& c) const {
   return (was_dead && is_walk(to) ? 0.5 : 1.0) / c.changes_in_s;
 }
 
-int Births::switches(const Hypothesis& parent, const Occasion& o, std::array<Switch, kConditions>& out,
-                     double& stays) const {
+bool Births::possible(Condition to, const Occasion& o) const {
+  if (!model_.options.conditions[static_cast<std::size_t>(to)]) return false;
+  if (to != Condition::kFrozen) return true;
+  return o.censoring == Censoring::kBetween || (o.repeated && o.censoring == Censoring::kNone);
+}
+
+int Births::switches(const Hypothesis& parent, const Occasion& o, double alone_share,
+                     std::array<Switch, kConditions>& out, double& stays) const {
   const auto& c = model_.channels[static_cast<std::size_t>(o.channel)];
   const Condition from = parent.conditions.of(o.channel);
   // A long gap before a reading says little about when a fault struck: births are bounded to one response.
@@ -30,9 +35,8 @@ int Births::switches(const Hypothesis& parent, const Occasion& o, std::array<Swi
   double total = 0.0;
   for (int k = 0; k < kConditions; ++k) {
     const auto to = static_cast<Condition>(k);
-    const bool possible = model_.options.conditions[static_cast<std::size_t>(k)] &&
-                          (to != Condition::kFrozen || (o.repeated && o.censoring == Censoring::kNone));
-    if (possible) rates[static_cast<std::size_t>(k)] = rate(from, to, c);
+    if (possible(to, o)) rates[static_cast<std::size_t>(k)] = rate(from, to, c);
+    if (from == Condition::kSound) rates[static_cast<std::size_t>(k)] *= alone_share;
     total += rates[static_cast<std::size_t>(k)];
   }
   stays = std::exp(-total * gap_s);
@@ -49,104 +53,135 @@ int Births::switches(const Hypothesis& parent, const Occasion& o, std::array<Swi
 }
 
 double Births::bear(const Hypothesis& parent, const Occasion& o, const Walks& walks, double log_floor,
-                    Pool& children) {
+                    Pool& children, std::span<const Group> groups, std::span<const double> last_values) {
   double stays = 1.0;
   if (o.first) return stays;
+  double together = 0.0;
+  for (const Group& g : groups)
+    if (!g.freezes_only) together += g.share;
   std::array<Switch, kConditions> to{};
-  const int count = switches(parent, o, to, stays);
-  const Condition from = parent.conditions.of(o.channel);
-  for (int i = 0; i < count; ++i) {
-    const Switch& s = to[static_cast<std::size_t>(i)];
-    if (s.log_weight < log_floor) continue;
-    if (s.to == Condition::kSound) {
-      bear_sound(parent, o, s, children);
-    } else if (s.to == Condition::kStuck) {
-      bear_stuck(parent, o, s, children);
-    } else if (s.to == Condition::kFrozen) {
-      bear_frozen(parent, o, s, children);
-    } else if (is_walk(from)) {
-      bear_walk(parent, o, s, walks, children);
-    } else {
-      bear_offset(parent, o, s, walks, children);
-    }
-  }
+  const int count = switches(parent, o, std::max(0.0, 1.0 - together), to, stays);
+  for (int i = 0; i < count; ++i)
+    if (to[static_cast<std::size_t>(i)].log_weight >= log_floor)
+      bear(parent, o, to[static_cast<std::size_t>(i)], walks, children);
+  if (parent.conditions.of(o.channel) == Condition::kSound)
+    for (const Group& g : groups) bear_together(parent, o, g, walks, last_values, log_floor, children);
   return stays;
 }
 
-Hypothesis& Births::child_of(const Hypothesis& parent, const Occasion& o, const Switch& to,
-                             Pool& children) const {
+// One cause strikes every member that is still sound. The probability that it struck is taken from the time
+// since any member read, so that it counts once; beside it, that nothing happened stays all but certain.
+void Births::bear_together(const Hypothesis& parent, const Occasion& o, const Group& group,
+                           const Walks& walks, std::span<const double> last_values, double log_floor,
+                           Pool& children) {
+  const double gap_s = std::min(group.gap_s, model_.response_s);
+  for (int k = 1; k < kConditions; ++k) {
+    const auto to = static_cast<Condition>(k);
+    if (!possible(to, o) || (group.freezes_only && to != Condition::kFrozen)) continue;
+    const double each =
+        group.share * rate(Condition::kSound, to, model_.channels[static_cast<std::size_t>(o.channel)]);
+    const Switch s{to, parent.log_weight + std::log(-std::expm1(-each * gap_s))};
+    if (!(s.log_weight >= log_floor) || !bear(parent, o, s, walks, children)) continue;
+    Hypothesis& child = children[children.size() - 1];
+    for (int j = 0; j < layout_.channels; ++j)
+      if (j != o.channel && group.member[static_cast<std::size_t>(j)] &&
+          child.conditions.of(j) == Condition::kSound)
+        strike(child, j, to, o.time_s, walks, last_values);
+  }
+}
+
+// A channel becomes unsound without a reading of its own: its next one will show what is as yet unknown.
+void Births::strike(Hypothesis& h, int channel, Condition condition, double time_s, const Walks& walks,
+                    std::span<const double> last_values) {
+  const auto j = static_cast<std::size_t>(channel);
+  const auto& c = model_.channels[j];
+  h.conditions.set(channel, condition);
+  h.since[channel] = time_s;
+  h.walk[channel] = kFirstWalk;
+  if (!is_walk(condition)) {
+    likelihood_.start_noise(h, channel);
+    likelihood_.reset_colour(h, channel, time_s);
+  }
+  if (!has_own(condition)) return;
+  const int at = add_own(h, channel, c.parts());
+  for (int i = 0; i < c.parts(); ++i) {
+    const PartModel& part = c.part(i);
+    const bool stuck = condition == Condition::kStuck;
+    const double size = stuck ? (part.hi - part.lo) / std::sqrt(12.0) : part.offset_size;
+    h.mean[at + i] = stuck ? last_values[static_cast<std::size_t>(layout_.first_part[j] + i)] : 0.0;
+    h.p(at + i, at + i) = size * size;
+  }
+  if (has_rate(condition)) start_rates(h, channel, walks);
+}
+
+void Births::start_rates(Hypothesis& h, int channel, const Walks& walks) const {
+  const auto j = static_cast<std::size_t>(channel);
+  add_rate(h, channel,
+           std::span(walks.first_rate)
+               .subspan(static_cast<std::size_t>(layout_.first_part[j]),
+                        static_cast<std::size_t>(layout_.part_count[j])));
+}
+
+bool Births::bear(const Hypothesis& parent, const Occasion& o, const Switch& to, const Walks& walks,
+                  Pool& children) {
   Hypothesis& child = children.append_copy(parent);
   child.log_weight = to.log_weight;
-  child.conditions.set(o.channel, to.to);
-  return child;
+  const bool was_sound = parent.conditions.of(o.channel) == Condition::kSound;
+  if (was_sound) child.since[o.channel] = o.time_s;
+  if (become(child, o, to.to, walks)) return true;
+  children.shrink(children.size() - 1);
+  return false;
 }
 
-void Births::start_noise(Hypothesis& h, int channel) const {
-  const double a0 = 0.5 * model_.channels[static_cast<std::size_t>(channel)].prior_readings;
-  h.noise[channel] = {a0, a0};
-}
-
-// sound, stuck or frozen → a walk: o = e exactly as uncertain as the reading that it is started from.
-void Births::bear_offset(const Hypothesis& parent, const Occasion& o, const Switch& to, const Walks& walks,
-                         Pool& children) {
-  const auto& c = model_.channels[static_cast<std::size_t>(o.channel)];
-  Hypothesis& child = child_of(parent, o, to, children);
-  if (has_own(parent.conditions.of(o.channel))) drop_own(child, o.channel);
-  const double prior_variance = c.offset_size * c.offset_size;
-  if (o.censoring != Censoring::kNone) {
-    // A censored reading fixes no offset: it starts from its prior, and the reading then bounds it.
-    expected_.column.fill(0.0);
-    add_own(child, o.channel, 0.0, prior_variance, expected_.column.data());
-    if (has_rate(to.to)) add_rate(child, o.channel, walks.first_rate[static_cast<std::size_t>(o.channel)]);
-    child.log_weight += likelihood_.absorb(child, o).log_likelihood;
-    return;
+// Offsets and levels start from the reading, which is thereby used; the walks keep the parent's noise, all
+// other conditions begin with the datasheet's.
+bool Births::become(Hypothesis& child, const Occasion& o, Condition to, const Walks& walks) {
+  const Condition from = child.conditions.of(o.channel);
+  if (is_walk(from) && is_walk(to)) {
+    become_walk(child, o, to, walks);
+    return true;
   }
-  likelihood_.projector().project(child, o.channel, Condition::kSound, o.time_s, expected_);
-  if (!expected_.known()) return children.shrink(children.size() - 1);
-  const double r = likelihood_.noise_variance(child.noise[o.channel], expected_.spec_variance);
-  const double e = likelihood_.residual(o, expected_.mean);
-  const double variance = expected_.variance + r;
-  for (int i = 0; i < child.dim; ++i) expected_.column[static_cast<std::size_t>(i)] *= -1.0;
-  add_own(child, o.channel, e, variance, expected_.column.data());
-  if (has_rate(to.to)) add_rate(child, o.channel, walks.first_rate[static_cast<std::size_t>(o.channel)]);
-  child.log_weight += log_normal(e, variance + prior_variance);
+  child.conditions.set(o.channel, to);
+  if (has_own(from)) drop_own(child, o.channel);
+  if (is_walk(to)) return become_offset(child, o, to, walks);
+  likelihood_.start_noise(child, o.channel);
+  if (to == Condition::kSound) {
+    child.log_weight += likelihood_.absorb(child, o).log_likelihood;
+  } else if (to == Condition::kStuck) {
+    likelihood_.begin_level(child, o);
+    child.log_weight += std::log(o.elsewhere);
+  } else {
+    likelihood_.reset_colour(child, o.channel, o.time_s);
+    child.log_weight += o.censoring == Censoring::kBetween
+                            ? std::log(kFrozenRepeats)
+                            : frozen_log_likelihood(true, o.resolution, o.span);
+  }
+  return true;
+}
+
+bool Births::become_offset(Hypothesis& child, const Occasion& o, Condition to, const Walks& walks) {
+  child.walk[o.channel] = kFirstWalk;
+  const double log_likelihood = likelihood_.begin_offset(child, o);
+  if (std::isnan(log_likelihood)) return false;
+  if (has_rate(to)) start_rates(child, o.channel, walks);
+  child.log_weight += log_likelihood;
+  return true;
 }
 
 // Between walks the state is kept; a faster one first makes one step of its own.
-void Births::bear_walk(const Hypothesis& parent, const Occasion& o, const Switch& to, const Walks& walks,
-                       Pool& children) {
+void Births::become_walk(Hypothesis& child, const Occasion& o, Condition to, const Walks& walks) {
   const auto j = static_cast<std::size_t>(o.channel);
-  Hypothesis& child = child_of(parent, o, to, children);
-  const auto from = static_cast<std::size_t>(parent.conditions.of(o.channel));
-  const auto next = static_cast<std::size_t>(to.to);
-  if (has_rate(parent.conditions.of(o.channel))) drop_rate(child, o.channel);
-  if (next > from) child.p(child.own_at[j], child.own_at[j]) += walks.own[next][j] * o.gap_s;
-  if (has_rate(to.to)) add_rate(child, o.channel, walks.first_rate[j]);
-  child.log_weight += likelihood_.absorb(child, o).log_likelihood;
-}
-
-void Births::bear_stuck(const Hypothesis& parent, const Occasion& o, const Switch& to, Pool& children) const {
-  Hypothesis& child = child_of(parent, o, to, children);
-  if (has_own(parent.conditions.of(o.channel))) drop_own(child, o.channel);
-  const double variance = likelihood_.projector().spec_variance(child, o.channel, o.time_s);
-  std::array<double, kMaxDim> none{};
-  add_own(child, o.channel, o.value, variance, none.data());
-  start_noise(child, o.channel);
-  child.log_weight += std::log(o.elsewhere);
-}
-
-void Births::bear_frozen(const Hypothesis& parent, const Occasion& o, const Switch& to,
-                         Pool& children) const {
-  Hypothesis& child = child_of(parent, o, to, children);
-  if (has_own(parent.conditions.of(o.channel))) drop_own(child, o.channel);
-  start_noise(child, o.channel);
-  child.log_weight += std::log(kFrozenRepeats / o.resolution);
-}
-
-void Births::bear_sound(const Hypothesis& parent, const Occasion& o, const Switch& to, Pool& children) {
-  Hypothesis& child = child_of(parent, o, to, children);
-  if (has_own(parent.conditions.of(o.channel))) drop_own(child, o.channel);
-  start_noise(child, o.channel);
+  const Condition from = child.conditions.of(o.channel);
+  const int parts = layout_.part_count[j];
+  child.conditions.set(o.channel, to);
+  child.walk[o.channel] = kFirstWalk;
+  if (has_rate(from)) drop_rate(child, o.channel, parts);
+  const int at = child.own_at[j];
+  for (int i = 0; i < parts && to > from; ++i)
+    child.p(at + i, at + i) +=
+        walks.own[static_cast<std::size_t>(to)][static_cast<std::size_t>(layout_.first_part[j] + i)] *
+        o.gap_s;
+  if (has_rate(to)) start_rates(child, o.channel, walks);
   child.log_weight += likelihood_.absorb(child, o).log_likelihood;
 }
 

@@ -8,7 +8,7 @@
 
 namespace steelyard::engine {
 
-Collector::Collector(const Model& model) : channels_(static_cast<int>(model.channels.size())) {
+Collector::Collector(const Model& model, const Layout& layout) : layout_(layout) {
   by_name_.resize(model.channels.size());
   std::iota(by_name_.begin(), by_name_.end(), 0);
   const auto name = [&](int j) -> const std::string& {
@@ -39,7 +39,7 @@ void Collector::merge_equal(Pool& pool) {
   int kept = 0;
   for (int i = 1; i < pool.size(); ++i) {
     if (pool[i].same_key(pool[kept])) {
-      merge(pool[kept], pool[i], channels_);
+      merge(pool[kept], pool[i], layout_);
     } else if (++kept != i) {
       pool.swap_items(kept, i);
     }

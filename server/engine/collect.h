@@ -10,7 +10,7 @@ namespace steelyard::engine {
 
 class Collector {
  public:
-  explicit Collector(const Model& model);
+  Collector(const Model& model, const Layout& layout);
 
   /// Sorts by key and merges equal keys by moments.
   void merge_equal(Pool& pool);
@@ -24,7 +24,7 @@ class Collector {
   void keep_heaviest(Pool& pool, int budget);
   [[nodiscard]] bool heavier(const Hypothesis& a, const Hypothesis& b) const;
 
-  int channels_;
+  const Layout& layout_;
   std::vector<int> by_name_;  ///< channels in the order of their names
   std::vector<int> order_;
 };

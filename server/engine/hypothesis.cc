@@ -18,19 +18,32 @@ Layout::Layout(const Model& model)
       fixed(core),
       channels(static_cast<int>(model.channels.size())) {
   bias_at.fill(-1);
-  for (int j = 0; j < channels; ++j)
-    if (model.channels[static_cast<std::size_t>(j)].bias_sd > 0.0)
-      bias_at[static_cast<std::size_t>(j)] = fixed++;
-  max_dim = fixed + 2 * channels;
+  colour_at.fill(-1);
+  shape_at.fill(-1);
+  for (std::size_t j = 0; j < model.channels.size(); ++j) {
+    const auto& c = model.channels[j];
+    first_part[j] = parts;
+    part_count[j] = c.parts();
+    for (int p = 0; p < c.parts(); ++p)
+      if (c.part(p).bias_sd > 0.0) bias_at[static_cast<std::size_t>(parts + p)] = fixed++;
+    parts += c.parts();
+    if (c.parts() == 1) continue;
+    shape_at[j] = shape_size;
+    shape_size += c.parts() * c.parts();
+  }
+  for (std::size_t j = 0; j < model.channels.size(); ++j)
+    if (model.channels[j].correlation > 0.0) colour_at[j] = fixed++;
+  max_dim = fixed + 2 * parts;
 }
 
 Pool::Pool(const Layout& layout, int capacity)
-    : channels_(layout.channels),
+    : channels_(static_cast<std::size_t>(layout.channels)),
       mean_size_(static_cast<std::size_t>(layout.max_dim)),
       cov_size_(mean_size_ * mean_size_),
+      learned_size_(5 * channels_ + static_cast<std::size_t>(layout.shape_size)),
+      block_(mean_size_ + cov_size_ + learned_size_),
       items_(static_cast<std::size_t>(capacity)),
       block_of_(static_cast<std::size_t>(capacity)) {
-  block_ = mean_size_ + cov_size_ + 2 * static_cast<std::size_t>(channels_);
   storage_.resize(block_ * items_.size());
   for (std::size_t i = 0; i < items_.size(); ++i) block_of_[i] = i;
   point_into_storage();
@@ -38,9 +51,10 @@ Pool::Pool(const Layout& layout, int capacity)
 
 Pool::Pool(const Pool& other)
     : channels_(other.channels_),
-      block_(other.block_),
       mean_size_(other.mean_size_),
       cov_size_(other.cov_size_),
+      learned_size_(other.learned_size_),
+      block_(other.block_),
       size_(other.size_),
       storage_(other.storage_),
       items_(other.items_),
@@ -51,9 +65,10 @@ Pool::Pool(const Pool& other)
 Pool& Pool::operator=(const Pool& other) {
   if (this == &other) return *this;
   channels_ = other.channels_;
-  block_ = other.block_;
   mean_size_ = other.mean_size_;
   cov_size_ = other.cov_size_;
+  learned_size_ = other.learned_size_;
+  block_ = other.block_;
   size_ = other.size_;
   storage_ = other.storage_;
   items_ = other.items_;
@@ -67,7 +82,11 @@ void Pool::point_into_storage() {
     double* block = storage_.data() + block_ * block_of_[i];
     items_[i].mean = block;
     items_[i].cov = block + mean_size_;
-    items_[i].noise = reinterpret_cast<Gamma*>(block + mean_size_ + cov_size_);
+    double* learned = block + mean_size_ + cov_size_;
+    items_[i].noise = reinterpret_cast<Gamma*>(learned);
+    items_[i].walk = reinterpret_cast<Gamma*>(learned + 2 * channels_);
+    items_[i].since = learned + 4 * channels_;
+    items_[i].shape = learned + 5 * channels_;
   }
 }
 
@@ -82,7 +101,7 @@ void Pool::assign(Hypothesis& to, const Hypothesis& from) const {
   const auto dim = static_cast<std::size_t>(from.dim);
   std::memcpy(to.mean, from.mean, dim * sizeof(double));
   std::memcpy(to.cov, from.cov, dim * dim * sizeof(double));
-  std::memcpy(to.noise, from.noise, static_cast<std::size_t>(channels_) * sizeof(Gamma));
+  std::memcpy(to.noise, from.noise, learned_size_ * sizeof(double));
 }
 
 Hypothesis& Pool::append_copy(const Hypothesis& from) {
@@ -162,12 +181,25 @@ void add_own(Hypothesis& h, int channel, double mean, double variance, const dou
   h.own_at[static_cast<std::size_t>(channel)] = static_cast<std::int16_t>(at);
 }
 
-void add_rate(Hypothesis& h, int channel, double variance) {
+int add_own(Hypothesis& h, int channel, int count) {
   const std::array<double, kMaxDim> none{};
-  insert(h, h.own_at[static_cast<std::size_t>(channel)] + 1, 0.0, variance, none.data());
+  const int at = place_of(h, channel);
+  for (int i = 0; i < count; ++i) insert(h, at, 0.0, 0.0, none.data());
+  h.own_at[static_cast<std::size_t>(channel)] = static_cast<std::int16_t>(at);
+  return at;
 }
 
-void drop_rate(Hypothesis& h, int channel) { erase(h, h.own_at[static_cast<std::size_t>(channel)] + 1); }
+void add_rate(Hypothesis& h, int channel, std::span<const double> variance) {
+  const std::array<double, kMaxDim> none{};
+  const int parts = static_cast<int>(variance.size());
+  const int at = h.own_at[static_cast<std::size_t>(channel)] + parts;
+  for (int i = 0; i < parts; ++i) insert(h, at + i, 0.0, variance[static_cast<std::size_t>(i)], none.data());
+}
+
+void drop_rate(Hypothesis& h, int channel, int parts) {
+  const int at = h.own_at[static_cast<std::size_t>(channel)] + parts;
+  for (int i = 0; i < parts; ++i) erase(h, at);
+}
 
 void drop_own(Hypothesis& h, int channel) {
   const auto j = static_cast<std::size_t>(channel);
@@ -177,7 +209,7 @@ void drop_own(Hypothesis& h, int channel) {
   h.own_at[j] = -1;
 }
 
-void merge(Hypothesis& into, const Hypothesis& from, int channels) {
+void merge(Hypothesis& into, const Hypothesis& from, const Layout& layout) {
   const double total = log_sum(into.log_weight, from.log_weight);
   const double p = std::exp(from.log_weight - total);
   const int dim = into.dim;
@@ -190,7 +222,12 @@ void merge(Hypothesis& into, const Hypothesis& from, int channels) {
     }
   }
   for (int i = 0; i < dim; ++i) into.mean[i] += p * (from.mean[i] - into.mean[i]);
-  for (int j = 0; j < channels; ++j) into.noise[j] = mix(into.noise[j], from.noise[j], p);
+  for (int j = 0; j < layout.channels; ++j) {
+    into.noise[j] = mix(into.noise[j], from.noise[j], p);
+    into.walk[j] = mix(into.walk[j], from.walk[j], p);
+    into.since[j] += p * (from.since[j] - into.since[j]);
+  }
+  for (int i = 0; i < layout.shape_size; ++i) into.shape[i] += p * (from.shape[i] - into.shape[i]);
   into.log_weight = total;
 }
 

@@ -21,10 +21,16 @@ struct Layout {
   explicit Layout(const Model& model);
   int states = 0;
   int core = 0;   ///< states + inputs: what moves by the machine's law
-  int fixed = 0;  ///< core + biases: what every hypothesis carries
+  int fixed = 0;  ///< core + biases + correlated noises: what every hypothesis carries
   int channels = 0;
-  int max_dim = 0;                          ///< fixed + 2 · channels
-  std::array<int, kMaxChannels> bias_at{};  ///< index in z of a channel's standing bias, −1: none
+  int parts = 0;                               ///< of all channels together
+  int max_dim = 0;                             ///< fixed + 2 · parts
+  int shape_size = 0;                          ///< numbers in a hypothesis's shapes
+  std::array<int, kMaxChannels> first_part{};  ///< of a channel, among the parts of all channels
+  std::array<int, kMaxChannels> part_count{};
+  std::array<int, kMaxParts> bias_at{};       ///< index in z of a part's standing bias, −1: none
+  std::array<int, kMaxChannels> colour_at{};  ///< index in z of a channel's correlated noise, −1: none
+  std::array<int, kMaxChannels> shape_at{};  ///< where a vector channel's shape begins, −1: a scalar channel
 };
 
 /// Four bits a channel: the conditions of all channels, cheap to compare.
@@ -53,17 +59,21 @@ class Conditions {
 }
 /// A creeping channel's offset has a rate of its own, so that a steady drift costs nothing to explain.
 [[nodiscard]] constexpr bool has_rate(Condition c) { return c == Condition::kCreeping; }
+/// The walks of these two have a speed that is learned; a creeping offset moves by its rate.
+[[nodiscard]] constexpr bool learns_speed(Condition c) {
+  return c == Condition::kOffset || c == Condition::kWandering;
+}
 /// Does a channel in this condition carry a number of its own in z (an offset, or a stuck level)?
 [[nodiscard]] constexpr bool has_own(Condition c) { return is_walk(c) || c == Condition::kStuck; }
 
-/// Most elements of z: core, biases, two numbers a channel.
-inline constexpr int kMaxDim = kMaxStates + kMaxInputs + 3 * kMaxChannels;
+/// Most elements of z: core, biases and two numbers a part, correlated noises.
+inline constexpr int kMaxDim = kMaxStates + kMaxInputs + 3 * kMaxParts + kMaxChannels;
 
-/// How the channels' own numbers move by themselves, in the channels' units.
+/// How the channels' own numbers move by themselves, in the channels' units; by part.
 struct Walks {
-  std::array<std::array<double, kMaxChannels>, kConditions> own{};  ///< spectral density, unit²/s
-  std::array<double, kMaxChannels> rate{};        ///< of a creeping channel's rate, (unit/s)²/s
-  std::array<double, kMaxChannels> first_rate{};  ///< variance of that rate at its birth, (unit/s)²
+  std::array<std::array<double, kMaxParts>, kConditions> own{};  ///< spectral density, unit²/s
+  std::array<double, kMaxParts> rate{};                          ///< of a creeping part's rate, (unit/s)²/s
+  std::array<double, kMaxParts> first_rate{};  ///< variance of that rate at its birth, (unit/s)²
 };
 
 struct Hypothesis {
@@ -71,10 +81,14 @@ struct Hypothesis {
   Conditions conditions;
   Mode mode = Mode::kUsual;
   int dim = 0;
-  std::array<std::int16_t, kMaxChannels> own_at{};  ///< index in z of a channel's own number, −1: none
-  double* mean = nullptr;                           ///< dim
-  double* cov = nullptr;                            ///< dim × dim, row-major, full and symmetric
-  Gamma* noise = nullptr;                           ///< by channel
+  /// Index in z of a channel's own numbers (one a part, then their rates if they have any), −1: none.
+  std::array<std::int16_t, kMaxChannels> own_at{};
+  double* mean = nullptr;   ///< dim
+  double* cov = nullptr;    ///< dim × dim, row-major, full and symmetric
+  Gamma* noise = nullptr;   ///< by channel: relative precision κ; of a vector channel 2a is Wishart's ν
+  Gamma* walk = nullptr;    ///< by channel: precision of the offset's walk, relative to its condition's speed
+  double* since = nullptr;  ///< by channel: mean time in s at which it stopped being sound; unused if it is
+  double* shape = nullptr;  ///< of vector channels: mean relative precision, parts × parts (Layout::shape_at)
 
   [[nodiscard]] double& p(int i, int k) { return cov[i * dim + k]; }
   [[nodiscard]] double p(int i, int k) const { return cov[i * dim + k]; }
@@ -114,26 +128,30 @@ class Pool {
 
  private:
   void point_into_storage();
-  int channels_ = 0;
-  std::size_t block_ = 0;  ///< doubles a hypothesis: mean, cov, noise
+  std::size_t channels_ = 0;
   std::size_t mean_size_ = 0;
   std::size_t cov_size_ = 0;
+  std::size_t learned_size_ = 0;  ///< noise, walk, since, shape
+  std::size_t block_ = 0;         ///< doubles a hypothesis: mean, cov, learned
   int size_ = 0;
   std::vector<double> storage_;
   std::vector<Hypothesis> items_;
   std::vector<std::size_t> block_of_;  ///< which block of storage_ items_[i] uses
 };
 
-/// Gives channel's own number its place in z, with the given moments; `cross` has the covariance with the old
-/// z (dim entries). The channel must not have one yet.
+/// Makes room in z for a channel's own numbers and returns the index of the first; they are all zero, with
+/// zero covariances. The channel must not have any yet.
+int add_own(Hypothesis& h, int channel, int count);
+/// One number with the given moments; `cross` has its covariance with the old z (dim entries).
 void add_own(Hypothesis& h, int channel, double mean, double variance, const double* cross);
-/// Gives the channel's own number a rate, right behind it in z, with mean 0 and independent of the rest.
-void add_rate(Hypothesis& h, int channel, double variance);
-void drop_rate(Hypothesis& h, int channel);
+/// Gives each of the channel's `parts` own numbers a rate, behind them in z, with mean 0 and independent of
+/// the rest; variance by part.
+void add_rate(Hypothesis& h, int channel, std::span<const double> variance);
+void drop_rate(Hypothesis& h, int channel, int parts);
 /// Takes all of a channel's own numbers out of z (marginalises them).
 void drop_own(Hypothesis& h, int channel);
 
 /// Moment-matched merge of `from` into `into` (same key); weights add up.
-void merge(Hypothesis& into, const Hypothesis& from, int channels);
+void merge(Hypothesis& into, const Hypothesis& from, const Layout& layout);
 
 }  // namespace steelyard::engine

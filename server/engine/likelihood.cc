@@ -73,6 +73,22 @@ double Likelihood::influence(const Step& step) const {
   return step.weight * step.shrink * sum / step.total_variance;
 }
 
+// The walk's step over the gap is part of what the reading shows, with variance v of S: the score and the
+// Fisher information of log v move the Gamma of the walk's precision (a natural-gradient step: Amari 1998).
+// The plain variational update counts each reading as half an observation of the step, however little it
+// shows of it.
+void Likelihood::learn_walk(Hypothesis& h, const Occasion& o, const Step& step) const {
+  const Condition condition = h.conditions.of(o.channel);
+  if (!learns_speed(condition) || !model_.options.learn_walk) return;
+  Gamma& g = h.walk[o.channel];
+  const double mean = g.mean();
+  const double v = o.walked[static_cast<std::size_t>(condition)] / mean;
+  const double share = v / step.total_variance;
+  const double surprise = step.shift * step.shift / step.total_variance - 1.0;
+  g.a += 0.5 * step.weight * share * share;
+  g.b += 0.5 * step.weight * (share * share + share * surprise) / mean;
+}
+
 // Moments of the mixture of the updated and the untouched Gaussian.
 void Likelihood::move(Hypothesis& h, const Step& step) {
   // A covariance beyond what the variances allow (Cauchy–Schwarz) is rounding error: nothing is known of it.
@@ -103,39 +119,76 @@ double Likelihood::repeat_probability(const Occasion& o, double noise_variance) 
   return o.regular * inside + (1.0 - o.regular) * o.resolution / o.span;
 }
 
-// The true value lies beyond the bound: the state moves by the moments of a normal that is cut off there
-// (Tobin 1958). The noise learns too: were it to learn from the readings inside the range alone, it would see
-// the tails only.
+// The true value lies beyond a bound, or between two: the state moves by the moments of a normal that is cut
+// off there (Tobin 1958). The noise learns from what lies beyond the range: were it to learn from the
+// readings inside alone, it would see the tails only. Silence of an on-change source teaches no noise: how
+// often it was heeded is ours to choose.
 Absorbed Likelihood::absorb_censored(Hypothesis& h, const Occasion& o, double r) {
-  const double side = o.censoring == Censoring::kBelow ? 1.0 : -1.0;
-  const double reach = side * (o.bound - expected_.mean);
+  const double below = o.censoring == Censoring::kBelow ? -INFINITY : o.bound - expected_.mean;
+  const double above = o.censoring == Censoring::kBelow   ? o.bound - expected_.mean
+                       : o.censoring == Censoring::kAbove ? INFINITY
+                                                          : o.upper - expected_.mean;
+  const auto cut = [below, above](double total) {
+    const double sd = std::sqrt(total);
+    return truncate(below / sd, above / sd);
+  };
   const double s = expected_.variance;
-  const double log_inside = log_normal_cdf(reach / std::sqrt(s + r)) + std::log(o.regular);
+  const double log_inside = cut(s + r).log_probability + std::log(o.regular);
   Absorbed out;
   out.log_likelihood = log_sum(log_inside, std::log((1.0 - o.regular) * o.elsewhere));
   Step step;
   step.weight = std::exp(log_inside - out.log_likelihood);
-  const auto second_moment = [reach](double total) {
-    const double z = reach / std::sqrt(total);
-    return total * std::max(1.0 - z * inverse_mills(z), 0.0);
+  const auto second_moment = [&cut](double total) {
+    const Truncated t = cut(total);
+    return total * std::max(1.0 - t.shrink + t.mean * t.mean, 0.0);
   };
-  step.total_variance =
-      s + learn(h.noise[o.channel], s, r, expected_.spec_variance, step.weight, second_moment);
-  const double sd = std::sqrt(step.total_variance);
-  const double z = reach / sd;
-  const double mills = inverse_mills(z);
-  step.shift = -side * mills * sd;
-  step.shrink = std::clamp(mills * (z + mills), 0.0, 1.0);
+  if (o.censoring != Censoring::kBetween)
+    r = learn(h.noise[o.channel], s, r, expected_.spec_variance, step.weight, second_moment);
+  step.total_variance = s + r;
+  const Truncated t = cut(step.total_variance);
+  step.shift = t.mean * std::sqrt(step.total_variance);
+  step.shrink = t.shrink;
   out.influence = influence(step);
   move(h, step);
   return out;
 }
 
+// The reading shows the sum of what it tells of the machine and of its correlated noise: what is new of that
+// noise is part of both (measurement differencing: Bryson & Henrikson 1968, here with the state augmented).
+void Likelihood::add_fresh_noise(Hypothesis& h, int channel, double r) {
+  const int at = layout_.colour_at[static_cast<std::size_t>(channel)];
+  if (at < 0) return;
+  h.p(at, at) += r;
+  expected_.column[static_cast<std::size_t>(at)] += r;
+}
+
+void Likelihood::reset_colour(Hypothesis& h, int channel, double time_s) const {
+  const int at = layout_.colour_at[static_cast<std::size_t>(channel)];
+  if (at < 0) return;
+  for (int k = 0; k < h.dim; ++k) h.p(at, k) = h.p(k, at) = 0.0;
+  h.mean[at] = 0.0;
+  h.p(at, at) = noise_variance(h.noise[channel], projector_.spec_variance(h, channel, 0, time_s));
+}
+
+void Likelihood::start_noise(Hypothesis& h, int channel) const {
+  if (layout_.part_count[static_cast<std::size_t>(channel)] > 1) return vector_.start_noise(h, channel);
+  const double a0 = prior_shape(model_.channels[static_cast<std::size_t>(channel)]);
+  h.noise[channel] = {a0, a0};
+}
+
+void Likelihood::forget_noise(Hypothesis& h, int channel, double keep) const {
+  if (layout_.part_count[static_cast<std::size_t>(channel)] > 1) return vector_.forget(h, channel, keep);
+  forget(h.noise[channel], prior_shape(model_.channels[static_cast<std::size_t>(channel)]), keep);
+}
+
 Absorbed Likelihood::absorb(Hypothesis& h, const Occasion& o) {
   const auto j = static_cast<std::size_t>(o.channel);
-  projector_.project(h, o.channel, h.conditions.of(o.channel), o.time_s, expected_);
+  const Condition condition = h.conditions.of(o.channel);
+  if (layout_.part_count[j] > 1) return vector_.absorb(h, o);
+  projector_.project(h, o.channel, 0, condition, o.time_s, expected_);
   // A hypothesis that expects nothing takes the reading for as likely as a stray, and learns nothing from it.
   if (!expected_.known()) return {std::log(o.elsewhere), 0.0, 0.0};
+  if (condition != Condition::kStuck) expected_.spec_variance *= o.fresh;
   Gamma& g = h.noise[o.channel];
   const double s = expected_.variance;
   const double r = noise_variance(g, expected_.spec_variance);
@@ -150,11 +203,46 @@ Absorbed Likelihood::absorb(Hypothesis& h, const Occasion& o) {
   Step step;
   step.weight = std::exp(log_inside - out.log_likelihood);
   step.shift = e;
-  step.total_variance =
-      s + learn(g, s, r, expected_.spec_variance, step.weight, [e](double) { return e * e; });
+  const double learned = learn(g, s, r, expected_.spec_variance, step.weight, [e](double) { return e * e; });
+  step.total_variance = s + learned;
+  if (condition == Condition::kStuck) {
+    reset_colour(h, o.channel, o.time_s);
+  } else {
+    add_fresh_noise(h, o.channel, learned);
+  }
+  learn_walk(h, o, step);
   out.influence = influence(step);
   move(h, step);
   return out;
+}
+
+double Likelihood::begin_offset(Hypothesis& h, const Occasion& o) {
+  if (o.censoring != Censoring::kNone) {
+    const double size = model_.channels[static_cast<std::size_t>(o.channel)].offset_size;
+    const int at = add_own(h, o.channel, 1);
+    h.p(at, at) = size * size;
+    return absorb(h, o).log_likelihood;
+  }
+  if (layout_.part_count[static_cast<std::size_t>(o.channel)] > 1) return vector_.begin_offset(h, o);
+  projector_.project(h, o.channel, 0, Condition::kSound, o.time_s, expected_);
+  if (!expected_.known()) return NAN;
+  const double r = noise_variance(h.noise[o.channel], o.fresh * expected_.spec_variance);
+  add_fresh_noise(h, o.channel, r);
+  const double e = residual(o, expected_.mean);
+  const double variance = expected_.variance + r;
+  for (int i = 0; i < h.dim; ++i) expected_.column[static_cast<std::size_t>(i)] *= -1.0;
+  add_own(h, o.channel, e, variance, expected_.column.data());
+  const double size = model_.channels[static_cast<std::size_t>(o.channel)].offset_size;
+  return log_normal(e, variance + size * size);
+}
+
+void Likelihood::begin_level(Hypothesis& h, const Occasion& o) {
+  if (layout_.part_count[static_cast<std::size_t>(o.channel)] > 1) return vector_.begin_level(h, o);
+  const double variance = projector_.spec_variance(h, o.channel, 0, o.time_s);
+  reset_colour(h, o.channel, o.time_s);
+  const int at = add_own(h, o.channel, 1);
+  h.mean[at] = o.value;
+  h.p(at, at) = variance;
 }
 
 }  // namespace steelyard::engine

@@ -20,6 +20,7 @@ using TimeNs = std::int64_t;
 inline constexpr int kMaxStates = 16;
 inline constexpr int kMaxInputs = 8;
 inline constexpr int kMaxChannels = 32;
+inline constexpr int kMaxCommon = 8;
 inline constexpr int kMaxParts = 32;  ///< of all channels together; a scalar channel is one
 
 /// How a channel's reading relates to the machine. "silent" is reported beside these, see ChannelEstimate.
@@ -51,6 +52,10 @@ struct AffineForm {
 
 /// Exactly affine laws run by exact discretisation, all others by sigma points.
 using Law = std::variant<AffineForm, std::shared_ptr<Formula>>;
+
+/// The law's value; states and inputs as for Formula::evaluate.
+[[nodiscard]] double law_value(const Law& law, std::span<const double> states, std::span<const double> inputs,
+                               double time_s);
 
 struct StateModel {
   std::string name;
@@ -118,6 +123,9 @@ struct ChannelModel : PartModel {
   }
 };
 
+/// Correlation of the noise of two readings that are gap_s apart (first-order autoregressive); 0: none.
+[[nodiscard]] double correlation_over(const ChannelModel& channel, double gap_s);
+
 /// Channels whose faults may have one cause: the share β of a channel's faults strikes all of them together
 /// (the beta factor of IEC 61508-6).
 struct CommonCause {
@@ -142,6 +150,7 @@ struct Options {
       true;  ///< false: every channel keeps its datasheet precision, Student-t becomes normal
   bool cap_precision = true;  ///< false: a channel may be learned to be better than its datasheet
   bool forget = true;         ///< false: memory is infinite
+  bool learn_walk = true;     ///< false: offsets walk at the fixed speeds of their conditions
   bool use_repeats = true;    ///< false: exact repeats are not evidence
   std::array<bool, kConditions> conditions{true, true, true, true, true, true};
 };

@@ -24,17 +24,6 @@ bool all_affine(const Model& model) {
                      [](const StateModel& s) { return std::holds_alternative<AffineForm>(s.rate); });
 }
 
-double law_value(const Law& law, const double* states, std::size_t n, const double* inputs, std::size_t k,
-                 double time_s) {
-  if (const auto* affine = std::get_if<AffineForm>(&law)) {
-    double sum = affine->constant;
-    for (std::size_t i = 0; i < n; ++i) sum += affine->on_states[i] * states[i];
-    for (std::size_t i = 0; i < k; ++i) sum += affine->on_inputs[i] * inputs[i];
-    return sum;
-  }
-  return std::get<std::shared_ptr<Formula>>(law)->evaluate({states, n}, {inputs, k}, time_s);
-}
-
 }  // namespace
 
 Motion::Motion(const Model& model, const Layout& layout)
@@ -62,6 +51,8 @@ void Motion::prepare(TimeNs from_ns, TimeNs to_ns, unsigned unknown_inputs) {
   const TimeNs length_ns = to_ns - from_ns;
   gap_s_ = seconds(length_ns);
   unknown_ = unknown_inputs;
+  for (std::size_t j = 0; j < model_.channels.size(); ++j)
+    colour_keeps_[j] = correlation_over(model_.channels[j], gap_s_);
   if (!affine_) return;
   for (const auto& gap : cache_) {
     if (gap.length_ns != length_ns || gap.unknown != unknown_) continue;
@@ -105,7 +96,7 @@ void Motion::rates(const CoreVector& v, double time_s, CoreVector& out) const {
   const auto k = static_cast<std::size_t>(layout_.core - layout_.states);
   for (std::size_t i = 0; i < n; ++i)
     out(static_cast<Eigen::Index>(i)) =
-        law_value(model_.states[i].rate, v.data(), n, v.data() + n, k, time_s);
+        law_value(model_.states[i].rate, {v.data(), n}, {v.data() + n, k}, time_s);
   for (std::size_t i = 0; i < k; ++i) {
     out(static_cast<Eigen::Index>(n + i)) = 0.0;  // held; fill() adds the pull of unknown ones
   }
@@ -166,25 +157,38 @@ void Motion::predict(std::span<Hypothesis> group, const Walks& walks) {
 void Motion::walk(Hypothesis& h, const Walks& walks) const {
   for (int j = 0; j < layout_.channels; ++j) {
     const auto u = static_cast<std::size_t>(j);
-    const int at = h.own_at[u];
-    if (at < 0) continue;
+    if (layout_.colour_at[u] >= 0) fade(h, layout_.colour_at[u], colour_keeps_[u]);
+    const int own = h.own_at[u];
+    if (own < 0) continue;
     const Condition condition = h.conditions.of(j);
-    if (has_rate(condition)) drift(h, at, walks.rate[u]);
-    h.p(at, at) += walks.own[static_cast<std::size_t>(condition)][u] * gap_s_;
+    const int parts = layout_.part_count[u];
+    const double time_s = learns_speed(condition) ? gap_s_ / h.walk[j].mean() : gap_s_;
+    for (int i = 0; i < parts; ++i) {
+      const auto p = static_cast<std::size_t>(layout_.first_part[u] + i);
+      if (has_rate(condition)) drift(h, own + i, own + parts + i, walks.rate[p]);
+      h.p(own + i, own + i) += walks.own[static_cast<std::size_t>(condition)][p] * time_s;
+    }
   }
 }
 
-// o moves by its rate, which stands behind it, and the rate by white noise: the discretisation is that of
-// constant velocity with white acceleration.
-void Motion::drift(Hypothesis& h, int at, double rate_density) const {
+// Correlated noise decays towards nothing; what is new of it comes with the next reading (likelihood.cc).
+void Motion::fade(Hypothesis& h, int at, double keeps) {
+  h.mean[at] *= keeps;
+  for (int k = 0; k < h.dim; ++k) h.p(at, k) *= keeps;
+  for (int k = 0; k < h.dim; ++k) h.p(k, at) *= keeps;
+}
+
+// o moves by its rate, and the rate by white noise: the discretisation is that of constant velocity with
+// white acceleration.
+void Motion::drift(Hypothesis& h, int at, int rate, double rate_density) const {
   const double dt = gap_s_;
-  h.mean[at] += dt * h.mean[at + 1];
-  for (int k = 0; k < h.dim; ++k) h.p(at, k) += dt * h.p(at + 1, k);
-  for (int k = 0; k < h.dim; ++k) h.p(k, at) += dt * h.p(k, at + 1);
+  h.mean[at] += dt * h.mean[rate];
+  for (int k = 0; k < h.dim; ++k) h.p(at, k) += dt * h.p(rate, k);
+  for (int k = 0; k < h.dim; ++k) h.p(k, at) += dt * h.p(k, rate);
   h.p(at, at) += rate_density * dt * dt * dt / 3.0;
-  h.p(at, at + 1) += rate_density * dt * dt / 2.0;
-  h.p(at + 1, at) += rate_density * dt * dt / 2.0;
-  h.p(at + 1, at + 1) += rate_density * dt;
+  h.p(at, rate) += rate_density * dt * dt / 2.0;
+  h.p(rate, at) += rate_density * dt * dt / 2.0;
+  h.p(rate, rate) += rate_density * dt;
 }
 
 void Motion::apply(Hypothesis& h, const Gap& gap) {

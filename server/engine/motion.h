@@ -38,7 +38,8 @@ class Motion {
   void linearise(const Hypothesis& h, double time_s, double dt_s);
   void apply(Hypothesis& h, const Gap& gap);
   void walk(Hypothesis& h, const Walks& walks) const;
-  void drift(Hypothesis& h, int at, double rate_density) const;
+  static void fade(Hypothesis& h, int at, double keeps);
+  void drift(Hypothesis& h, int at, int rate, double rate_density) const;
 
   const Model& model_;
   const Layout& layout_;
@@ -50,7 +51,8 @@ class Motion {
   TimeNs from_ns_ = 0;
   double gap_s_ = 0.0;
   unsigned unknown_ = 0;
-  std::array<Gap, 8> cache_;  ///< of affine gaps, replaced in turn
+  std::array<double, kMaxChannels> colour_keeps_{};  ///< share of a channel's correlated noise that lasts
+  std::array<Gap, 8> cache_;                         ///< of affine gaps, replaced in turn
   int next_in_cache_ = 0;
   const Gap* affine_gap_ = nullptr;
   Gap local_;                 ///< one step of a law that is not affine

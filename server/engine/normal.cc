@@ -3,6 +3,7 @@
 // 1964, 26.2.14). Checked in tests/engine/normal_test.cc.
 #include "engine/normal.h"
 
+#include <algorithm>
 #include <cmath>
 #include <numbers>
 
@@ -45,6 +46,41 @@ double bin_probability(double e, double sd, double width) {
 double inverse_mills(double z) {
   if (z < -5.0) return 1.0 / upper_mills(-z);
   return std::exp(-0.5 * z * z - kLogSqrt2Pi) / normal_cdf(z);
+}
+
+namespace {
+
+Truncated truncate_above(double b) {
+  const double mills = inverse_mills(b);
+  return {log_normal_cdf(b), -mills, std::clamp(mills * (b + mills), 0.0, 1.0)};
+}
+
+// a < 0 and no farther from 0 than b is, so no tail is taken from 1.
+Truncated truncate_both(double a, double b) {
+  const double width = b - a;
+  const double p = bin_probability(0.5 * (a + b), 1.0, width);
+  if (p < 1e-290) {  // so far out that only the nearer end counts
+    Truncated out = truncate_above(b);
+    out.log_probability += std::log(-std::expm1(width * b));
+    return out;
+  }
+  const auto density = [](double z) { return std::exp(-0.5 * z * z - kLogSqrt2Pi); };
+  const double mean = (density(a) - density(b)) / p;
+  const double variance = 1.0 + (a * density(a) - b * density(b)) / p - mean * mean;
+  return {std::log(p), std::clamp(mean, a, b),
+          1.0 - std::clamp(variance, 0.0, std::min(1.0, 0.25 * width * width))};
+}
+
+}  // namespace
+
+Truncated truncate(double a, double b) {
+  const bool mirror = a + b > 0.0 || std::isinf(b);
+  if (mirror) {
+    Truncated out = truncate(-b, -a);
+    out.mean = -out.mean;
+    return out;
+  }
+  return std::isinf(a) ? truncate_above(b) : truncate_both(a, b);
 }
 
 double log_sum(double a, double b) {

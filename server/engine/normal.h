@@ -18,6 +18,15 @@ namespace steelyard::engine {
 /// φ(z)/Φ(z), the inverse Mills ratio; tends to −z for z → −∞.
 [[nodiscard]] double inverse_mills(double z);
 
+/// A standard normal, given that it lies in [a, b].
+struct Truncated {
+  double log_probability = 0.0;  ///< of lying there
+  double mean = 0.0;
+  double shrink = 0.0;  ///< 1 − variance, in [0, 1]
+};
+/// a < b, either may be infinite. Moments: Johnson, Kotz & Balakrishnan 1994, ch. 13.
+[[nodiscard]] Truncated truncate(double a, double b);
+
 /// log(exp(a) + exp(b)).
 [[nodiscard]] double log_sum(double a, double b);
 

@@ -18,7 +18,11 @@ constexpr std::array<double, kConditions> kWalk{0.0, 0.02, 3.5, 30.0, 0.05, 0.0}
 constexpr double kFirstRate = 1.0;
 constexpr double kRateWalk = 0.1;
 
-int standing_capacity(const Options& o) { return 3 * o.max_hypotheses + o.parents * Births::kMostChildren; }
+int children_capacity(const Model& m) {
+  return std::max(1, m.options.parents * Births::most_children(static_cast<int>(m.common.size()) + 1));
+}
+
+int standing_capacity(const Model& m) { return 3 * m.options.max_hypotheses + children_capacity(m); }
 
 }  // namespace
 
@@ -28,10 +32,10 @@ Posterior::Posterior(std::shared_ptr<const Model> m)
       motion(*model, layout),
       likelihood(*model, layout),
       births(*model, layout, likelihood),
-      collector(*model),
-      now(layout, standing_capacity(model->options)),
-      next(layout, standing_capacity(model->options)),
-      children(layout, std::max(1, model->options.parents * Births::kMostChildren)),
+      collector(*model, layout),
+      now(layout, standing_capacity(*model)),
+      next(layout, standing_capacity(*model)),
+      children(layout, children_capacity(*model)),
       channels(model->channels.size()),
       inputs(model->inputs.size()) {
   mode_on = {model->still.on, true, model->jolt.on};
@@ -40,6 +44,7 @@ Posterior::Posterior(std::shared_ptr<const Model> m)
   h.own_at.fill(-1);
   h.dim = layout.fixed;
   std::fill_n(h.cov, h.dim * h.dim, 0.0);
+  std::fill_n(h.mean, h.dim, 0.0);
   for (int i = 0; i < layout.states; ++i) {
     const auto& s = model->states[static_cast<std::size_t>(i)];
     h.mean[i] = s.start;
@@ -50,18 +55,20 @@ Posterior::Posterior(std::shared_ptr<const Model> m)
     h.mean[i] = u.start;
     h.p(i, i) = u.sd * u.sd;
   }
+  groups.reserve(kMaxGroups);
   for (int j = 0; j < layout.channels; ++j) {
-    const auto& c = model->channels[static_cast<std::size_t>(j)];
-    const int bias = layout.bias_at[static_cast<std::size_t>(j)];
-    if (bias >= 0) {
-      h.mean[bias] = 0.0;
-      h.p(bias, bias) = c.bias_sd * c.bias_sd;
+    const auto u = static_cast<std::size_t>(j);
+    const auto& c = model->channels[u];
+    for (int i = 0; i < c.parts(); ++i) {
+      const int bias = layout.bias_at[static_cast<std::size_t>(layout.first_part[u] + i)];
+      if (bias >= 0) h.p(bias, bias) = c.part(i).bias_sd * c.part(i).bias_sd;
     }
-    h.noise[j] = {0.5 * c.prior_readings, 0.5 * c.prior_readings};
-    auto& memory = channels[static_cast<std::size_t>(j)];
-    memory.repeats = RepeatRate(c, model->response_s);
-    memory.spec_sd = std::sqrt(likelihood.projector().spec_variance(h, j, 0.0));
-    refresh_walks(j);
+    likelihood.start_noise(h, j);
+    h.walk[j] = kFirstWalk;
+    h.since[j] = 0.0;
+    channels[u].repeats = RepeatRate(c, model->response_s);
+    channels[u].losses = LossRate(model->response_s);
+    refresh_walks(h, j, 0.0);
   }
 }
 
@@ -72,11 +79,13 @@ Posterior::Posterior(const Posterior& other)
       motion(*model, layout),
       likelihood(*model, layout),
       births(*model, layout, likelihood),
-      collector(*model),
+      collector(*model, layout),
       now(other.now),
       next(layout, other.next.capacity()),
       children(layout, other.children.capacity()),
       walks(other.walks),
+      last_values(other.last_values),
+      spec_sd(other.spec_sd),
       channels(other.channels),
       inputs(other.inputs),
       mode_on(other.mode_on),
@@ -84,18 +93,24 @@ Posterior::Posterior(const Posterior& other)
       started(other.started),
       predicted_to(other.predicted_to),
       time(other.time),
-      log_evidence(other.log_evidence) {}
+      log_evidence(other.log_evidence) {
+  groups.reserve(kMaxGroups);
+}
 
-void Posterior::refresh_walks(int channel) {
+void Posterior::refresh_walks(const Hypothesis& h, int channel, double time_s) {
   const auto j = static_cast<std::size_t>(channel);
-  for (std::size_t c = 0; c < kConditions; ++c) {
-    const double step = kWalk[c] * channels[j].spec_sd;
-    walks.own[c][j] = step * step / model->response_s;
+  for (int i = 0; i < layout.part_count[j]; ++i) {
+    const auto p = static_cast<std::size_t>(layout.first_part[j] + i);
+    spec_sd[p] = std::sqrt(likelihood.projector().spec_variance(h, channel, i, time_s));
+    for (std::size_t c = 0; c < kConditions; ++c) {
+      const double step = kWalk[c] * spec_sd[p];
+      walks.own[c][p] = step * step / model->response_s;
+    }
+    const double first = kFirstRate * spec_sd[p] / model->response_s;
+    const double change = kRateWalk * spec_sd[p] / model->response_s;
+    walks.first_rate[p] = first * first;
+    walks.rate[p] = change * change / model->response_s;
   }
-  const double first = kFirstRate * channels[j].spec_sd / model->response_s;
-  const double change = kRateWalk * channels[j].spec_sd / model->response_s;
-  walks.first_rate[j] = first * first;
-  walks.rate[j] = change * change / model->response_s;
 }
 
 void Posterior::start(TimeNs t) {
@@ -147,7 +162,7 @@ void Posterior::split_modes(double dt_s) {
         } else {
           const double kept = now[i].log_weight;
           now[i].log_weight = log_weight;
-          merge(*target, now[i], layout.channels);
+          merge(*target, now[i], layout);
           now[i].log_weight = kept;
         }
       }
@@ -208,6 +223,7 @@ void Posterior::condition_on_input(Hypothesis& h, int at, double value, double v
 }
 
 void Posterior::set_input(TimeNs t, int input, double value, bool good) {
+  heed_silence(t);
   advance(t);
   const auto& u = model->inputs[static_cast<std::size_t>(input)];
   auto& memory = inputs[static_cast<std::size_t>(input)];

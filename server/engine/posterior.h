@@ -17,12 +17,13 @@ namespace steelyard::engine {
 
 struct ChannelMemory {
   bool fused_any = false;
-  double last_value = 0.0;  ///< of the last fused reading
   TimeNs fused_at = 0;
+  TimeNs judged_at = 0;  ///< when it was last fused, or its silence heeded
+  int source = 0;        ///< of the last fused reading
   bool seen_any = false;
   TimeNs seen_at = 0;  ///< of the last usable reading, fused or the same measurement again
   RepeatRate repeats;
-  double spec_sd = 1.0;  ///< datasheet noise sd at the last reading; scales the walks
+  LossRate losses;
   double freedom = 0.0;  ///< degrees of freedom for signal, decaying with the response time
   TimeNs freedom_at = 0;
   std::int64_t out_of_range = 0;
@@ -48,15 +49,27 @@ struct Posterior {
   void set_input(TimeNs t, int input, double value, bool good);
   void condition_on_input(Hypothesis& h, int at, double value, double variance) const;
 
-  Fate read(TimeNs t, int channel, double value, Quality quality);
-  [[nodiscard]] Occasion occasion(TimeNs t, int channel, double value, Quality quality) const;
+  Fate read(TimeNs t, int channel, std::span<const double> values, Quality quality, int source);
+  Fate read(TimeNs t, int channel, double value, Quality quality) {
+    return read(t, channel, std::span<const double>(&value, 1), quality, 0);
+  }
+  [[nodiscard]] Occasion occasion(TimeNs t, int channel, std::span<const double> values,
+                                  Quality quality) const;
+  void censor_by_range(Occasion& o) const;
+  [[nodiscard]] Occasion silence_occasion(TimeNs t, int channel) const;
+  void heed_silence(TimeNs until);
+  [[nodiscard]] TimeNs next_heed(int channel) const;
+  [[nodiscard]] bool in_range(int channel, std::span<const double> values) const;
+  [[nodiscard]] std::span<const double> last_of(int channel) const;
+  void find_groups(const Occasion& o);
+  [[nodiscard]] double silent(int channel, TimeNs t) const;
   void fuse(const Occasion& o);
   void forget_noise(const Occasion& o);
   void bear_children(const Occasion& o);
   void absorb_standing(const Occasion& o);
   void settle_frozen(const Occasion& o, double log_average);
-  void remember(TimeNs t, const Occasion& o);
-  void refresh_walks(int channel);
+  void remember(TimeNs t, const Occasion& o, int source);
+  void refresh_walks(const Hypothesis& h, int channel, double time_s);
   [[nodiscard]] double probability(int channel, Condition condition) const;
 
   std::shared_ptr<const Model> model;
@@ -69,6 +82,9 @@ struct Posterior {
   Pool next;
   Pool children;
   Walks walks{};
+  std::array<double, kMaxParts> last_values{};  ///< of the last fused readings
+  std::array<double, kMaxParts> spec_sd{};      ///< datasheet noise sd at the last reading; scales the walks
+  std::vector<Group> groups;                    ///< of the channel that reads
   std::vector<ChannelMemory> channels;
   std::vector<InputMemory> inputs;
   std::array<bool, kModes> mode_on{};

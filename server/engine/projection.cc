@@ -17,8 +17,16 @@ constexpr double kRounding = 1e-15;
 
 }  // namespace
 
-double Projector::spec_variance(const Hypothesis& h, int channel, double time_s) const {
-  const auto& c = model_.channels[static_cast<std::size_t>(channel)];
+double Projection::along(const double* with) const {
+  double sum = 0.0;
+  for (int i = 0; i < slope.size(); ++i) sum += slope(i) * with[i];
+  for (const int at : ones)
+    if (at >= 0) sum += with[at];
+  return sum;
+}
+
+double Projector::spec_variance(const Hypothesis& h, int channel, int part, double time_s) const {
+  const auto& c = model_.channels[static_cast<std::size_t>(channel)].part(part);
   double sd = c.sd;
   if (c.sd_formula) {
     const auto n = static_cast<std::size_t>(layout_.states);
@@ -68,61 +76,75 @@ void Projector::regress(const Hypothesis& h, Formula& formula, double modulo, do
   divide_by_lower(out.slope, root);
 }
 
-void Projector::project(const Hypothesis& h, int channel, Condition condition, double time_s,
+void Projector::read_slope(const Hypothesis& h, const ChannelModel& channel, const PartModel& part,
+                           double time_s, Projection& out) const {
+  if (const auto* formula = std::get_if<std::shared_ptr<Formula>>(&part.reads))
+    return regress(h, **formula, channel.modulo, time_s, out);
+  const auto& affine = std::get<AffineForm>(part.reads);
+  const auto n = static_cast<std::size_t>(layout_.states);
+  out.slope.resize(layout_.core);
+  out.mean = affine.constant;
+  for (int i = 0; i < layout_.core; ++i) {
+    const auto u = static_cast<std::size_t>(i);
+    out.slope(i) = u < n ? affine.on_states[u] : affine.on_inputs[u - n];
+    out.mean += out.slope(i) * h.mean[i];
+  }
+}
+
+// A reading that was taken a little earlier or later than its stamp is off by its rate times that.
+double Projector::variance_by_time(const Hypothesis& h, double time_s, double time_sd_s,
+                                   const Projection& out) const {
+  const auto n = static_cast<std::size_t>(layout_.states);
+  const auto k = static_cast<std::size_t>(layout_.core - layout_.states);
+  double rate = 0.0;
+  for (std::size_t i = 0; i < n; ++i) {
+    const double slope = out.slope(static_cast<Eigen::Index>(i));
+    if (slope != 0.0) rate += slope * law_value(model_.states[i].rate, {h.mean, n}, {h.mean + n, k}, time_s);
+  }
+  const double off = rate * time_sd_s;
+  return std::isfinite(off) ? off * off : 0.0;
+}
+
+void Projector::project(const Hypothesis& h, int channel, int part, Condition condition, double time_s,
                         Projection& out) const {
   const auto j = static_cast<std::size_t>(channel);
   const auto& c = model_.channels[j];
   const int d = h.dim;
-  out.spec_variance = spec_variance(h, channel, time_s);
+  out.spec_variance = spec_variance(h, channel, part, time_s);
   out.mean = 0.0;
   out.variance = 0.0;
-  const int own = h.own_at[j];
+  out.ones.fill(-1);
+  const int own = h.own_at[j] + part;
   if (condition == Condition::kStuck) {
     out.slope.resize(0);
     out.mean = h.mean[own];
     for (int i = 0; i < d; ++i) out.column[static_cast<std::size_t>(i)] = h.p(own, i);
     out.variance = (1.0 + kRounding) * h.p(own, own);
+    out.ones[2] = own;
     return;
   }
-  if (const auto* affine = std::get_if<AffineForm>(&c.reads)) {
-    out.slope.resize(layout_.core);
-    out.mean = affine->constant;
-    for (int i = 0; i < layout_.core; ++i) {
-      const auto u = static_cast<std::size_t>(i);
-      const auto n = static_cast<std::size_t>(layout_.states);
-      out.slope(i) = u < n ? affine->on_states[u] : affine->on_inputs[u - n];
-      out.mean += out.slope(i) * h.mean[i];
-    }
-  } else {
-    regress(h, *std::get<std::shared_ptr<Formula>>(c.reads), c.modulo, time_s, out);
-  }
+  read_slope(h, c, c.part(part), time_s, out);
+  if (c.time_sd_s > 0.0) out.spec_variance += variance_by_time(h, time_s, c.time_sd_s, out);
+  out.ones = {layout_.bias_at[static_cast<std::size_t>(layout_.first_part[j] + part)], layout_.colour_at[j],
+              is_walk(condition) ? own : -1};
   std::fill_n(out.column.begin(), d, 0.0);
   const auto add_row = [&](int at, double weight) {
     const double* row = h.cov + at * d;
     for (int i = 0; i < d; ++i) out.column[static_cast<std::size_t>(i)] += weight * row[i];
   };
-  for (int i = 0; i < layout_.core; ++i)
-    if (out.slope(i) != 0.0) add_row(i, out.slope(i));
-  const int bias = layout_.bias_at[j];
-  const bool walks = is_walk(condition);
-  if (bias >= 0) add_row(bias, 1.0);
-  if (walks) add_row(own, 1.0);
-  double parts = 0.0;
+  double sizes = 0.0;
   for (int i = 0; i < layout_.core; ++i) {
-    out.variance += out.slope(i) * out.column[static_cast<std::size_t>(i)];
-    parts += out.slope(i) * out.slope(i) * h.p(i, i);
+    if (out.slope(i) == 0.0) continue;
+    add_row(i, out.slope(i));
+    sizes += out.slope(i) * out.slope(i) * h.p(i, i);
   }
-  if (bias >= 0) {
-    out.mean += h.mean[bias];
-    out.variance += out.column[static_cast<std::size_t>(bias)];
-    parts += h.p(bias, bias);
+  for (const int at : out.ones) {
+    if (at < 0) continue;
+    add_row(at, 1.0);
+    out.mean += h.mean[at];
+    sizes += h.p(at, at);
   }
-  if (walks) {
-    out.mean += h.mean[own];
-    out.variance += out.column[static_cast<std::size_t>(own)];
-    parts += h.p(own, own);
-  }
-  out.variance = std::max(out.variance, 0.0) + kRounding * parts;
+  out.variance = std::max(out.variance + out.along(out.column.data()), 0.0) + kRounding * sizes;
 }
 
 }  // namespace steelyard::engine

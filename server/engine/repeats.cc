@@ -14,15 +14,18 @@ constexpr double kMemoryResponses = 100.0;
 
 }  // namespace
 
-double effective_resolution(const ChannelModel& channel) {
-  return channel.resolution > 0.0 ? channel.resolution : channel.sd / 100.0;
+double effective_resolution(const PartModel& part) {
+  return part.resolution > 0.0 ? part.resolution : part.sd / 100.0;
 }
 
 RepeatRate::RepeatRate(const ChannelModel& channel, double response_s)
     : memory_s_(kMemoryResponses * response_s) {
   // Two readings of one value with noise sd fall into the same bin with density 1/(sd·√(4π)).
-  const double by_chance = effective_resolution(channel) / (channel.sd * std::sqrt(4.0 * std::numbers::pi));
-  const double rate = std::min(0.9, by_chance);
+  double rate = 1.0;
+  for (int i = 0; i < channel.parts(); ++i) {
+    const PartModel& part = channel.part(i);
+    rate *= std::min(0.9, effective_resolution(part) / (part.sd * std::sqrt(4.0 * std::numbers::pi)));
+  }
   prior_ = {kPriorReadings * rate, kPriorReadings * (1.0 - rate)};
   after_.fill(prior_);
 }
@@ -41,6 +44,29 @@ void RepeatRate::learn(bool repeated, double weight, double gap_s) {
   Beta& now = after_[last_repeated_ ? 1 : 0];
   (repeated ? now.repeats : now.others) += weight;
   last_repeated_ = repeated;
+}
+
+double LossRate::log_lost(double missed) const {
+  const double first = lost_first_ / (lost_first_ + came_first_);
+  const double next = lost_next_ / (lost_next_ + came_next_);
+  return std::min(missed, 1.0) * std::log(first) + std::max(missed - 1.0, 0.0) * std::log(next);
+}
+
+void LossRate::learn(double missed, double weight, double gap_s) {
+  const double keep = std::exp2(-gap_s / memory_s_);
+  const auto fade = [keep](double& count, double prior) { count = prior + keep * (count - prior); };
+  fade(lost_first_, kFirst * kPriorReadings);
+  fade(came_first_, (1.0 - kFirst) * kPriorReadings);
+  fade(lost_next_, kNext * kPriorReadings);
+  fade(came_next_, (1.0 - kNext) * kPriorReadings);
+  (missed > 0.0 ? lost_first_ : came_first_) += weight;
+  if (!(missed > 0.0)) return;
+  lost_next_ += weight * (missed - 1.0);
+  came_next_ += weight;
+}
+
+double frozen_log_likelihood(bool repeated, double resolution, double span) {
+  return repeated ? std::log(kFrozenRepeats / resolution) : std::log((1.0 - kFrozenRepeats) / span);
 }
 
 double repeat_factor(bool repeated, double learned_rate, double explained_rate) {

@@ -11,8 +11,7 @@
 namespace steelyard::engine {
 namespace {
 
-constexpr double kMissedDespiteWell = 0.1;  // P(a reading is lost on the way though the channel is well)
-constexpr double kNegligible = 1e-9;        // weight under which a hypothesis does not move an interval
+constexpr double kNegligible = 1e-9;  // weight under which a hypothesis does not move an interval
 constexpr std::size_t kExplanations = 3;
 
 using Policy = boost::math::policies::policy<boost::math::policies::promote_double<false>>;
@@ -128,14 +127,6 @@ Relaxation relax(const ChannelModel& c, const Options& options, double age_s) {
   return {settled + (1.0 - settled) * fade, settled * (1.0 - fade), std::max(ways, 1)};
 }
 
-double silence(const ChannelModel& c, double age_s) {
-  if (!(c.period_s > 0.0) || age_s <= c.period_s) return 0.0;
-  const double missed = age_s / c.period_s - 1.0;
-  const double log_odds =
-      std::log(-std::expm1(-age_s / c.fails_every_s)) - missed * std::log(kMissedDespiteWell);
-  return 1.0 / (1.0 + std::exp(-log_odds));
-}
-
 // Noise of the channel over the hypotheses: average shape and mean, as in a merge.
 Gamma average_noise(const Pool& pool, int channel) {
   double a = 0.0;
@@ -148,8 +139,7 @@ Gamma average_noise(const Pool& pool, int channel) {
   return {a, a / mean};
 }
 
-void report_noise(const Gamma& g, const Options& options, double spec_sd, Detail detail,
-                  ChannelEstimate& out) {
+void report_noise(const Gamma& g, const Options& options, double spec_sd, Detail detail, PartEstimate& out) {
   const double level = !options.learn_precision ? 1.0 : options.cap_precision ? mean_below_one(g) : g.mean();
   out.noise_sd = spec_sd / std::sqrt(level);
   out.noise_sd90 = {out.noise_sd, out.noise_sd};
@@ -163,14 +153,14 @@ void report_noise(const Gamma& g, const Options& options, double spec_sd, Detail
   out.noise_sd90 = {spec_sd / std::sqrt(quantile(0.95)), spec_sd / std::sqrt(quantile(0.05))};
 }
 
-void report_offset(const Pool& pool, int channel, ChannelEstimate& out) {
+void report_offset(const Pool& pool, int channel, int part, PartEstimate& out) {
   double weight = 0.0;
   double mean = 0.0;
   double square = 0.0;
   for (int i = 0; i < pool.size(); ++i) {
     if (!is_walk(pool[i].conditions.of(channel))) continue;
     const double w = std::exp(pool[i].log_weight);
-    const int at = pool[i].own_at[static_cast<std::size_t>(channel)];
+    const int at = pool[i].own_at[static_cast<std::size_t>(channel)] + part;
     weight += w;
     mean += w * pool[i].mean[at];
     square += w * (pool[i].p(at, at) + pool[i].mean[at] * pool[i].mean[at]);
@@ -180,43 +170,123 @@ void report_offset(const Pool& pool, int channel, ChannelEstimate& out) {
       weight > kNegligible ? std::sqrt(std::max(square / weight - out.offset * out.offset, 0.0)) : 0.0;
 }
 
+// What is learned of one channel's precision, as it stands at a later moment.
+class Precision {
+ public:
+  Precision(const Posterior& e, int channel, double keep)
+      : e_(e),
+        channel_(channel),
+        parts_(e.layout.part_count[static_cast<std::size_t>(channel)]),
+        keep_(keep) {
+    const auto& c = e.model->channels[static_cast<std::size_t>(channel)];
+    prior_ = prior_shape(c);
+  }
+
+  /// E[min(κ, 1)], of a vector channel in its worst direction.
+  [[nodiscard]] double level(const Hypothesis& h) const {
+    if (!e_.model->options.learn_precision) return 1.0;
+    if (parts_ > 1) return VectorReading::level(relaxed(h.noise[channel_].a), relaxed(shape_of(h)));
+    Gamma g = h.noise[channel_];
+    forget(g, prior_, keep_);
+    return mean_of_min_with_one(g);
+  }
+  [[nodiscard]] double prior_level() const {
+    if (!e_.model->options.learn_precision) return 1.0;
+    const double a = parts_ > 1 ? prior_ - 0.5 * (parts_ - 1) : prior_;
+    return mean_of_min_with_one({a, a});
+  }
+
+  /// The Gamma of each part's relative precision, over the hypotheses.
+  void by_part(const Pool& pool, std::array<Gamma, kMaxParts>& out) const {
+    Gamma mean = average_noise(pool, channel_);
+    if (parts_ == 1) {
+      if (e_.model->options.forget) forget(mean, prior_, keep_);
+      out[0] = mean;
+      return;
+    }
+    PartsMatrix shape = PartsMatrix::Zero(parts_, parts_);
+    for (int i = 0; i < pool.size(); ++i) shape += std::exp(pool[i].log_weight) * shape_of(pool[i]);
+    const double a = relaxed(mean.a);
+    PartsVector variance;
+    e_.likelihood.vector().relative_variance(channel_, a, relaxed(shape), variance);
+    const double half = a - 0.5 * (parts_ - 1);
+    for (int p = 0; p < parts_; ++p) out[static_cast<std::size_t>(p)] = {half, half * variance(p)};
+  }
+
+ private:
+  [[nodiscard]] PartsMatrix shape_of(const Hypothesis& h) const {
+    return Eigen::Map<const Eigen::MatrixXd>(h.shape + e_.layout.shape_at[static_cast<std::size_t>(channel_)],
+                                             parts_, parts_);
+  }
+  [[nodiscard]] double relaxed(double a) const { return prior_ + keep_ * (a - prior_); }
+  // Between the mean and the identity; the exact way by the scatter differs little and costs an inverse more.
+  [[nodiscard]] PartsMatrix relaxed(const PartsMatrix& mean) const {
+    return keep_ * mean + (1.0 - keep_) * PartsMatrix::Identity(parts_, parts_);
+  }
+
+  const Posterior& e_;
+  int channel_;
+  int parts_;
+  double keep_;
+  double prior_ = 0.0;
+};
+
+void report_parts(const Posterior& e, const Pool& pool, int channel, const Precision& precision,
+                  Detail detail, ChannelEstimate& out) {
+  const auto j = static_cast<std::size_t>(channel);
+  const int parts = e.layout.part_count[j];
+  std::array<Gamma, kMaxParts> noise;
+  precision.by_part(pool, noise);
+  out.others.resize(static_cast<std::size_t>(parts - 1));
+  for (int p = 0; p < parts; ++p) {
+    PartEstimate part;
+    report_noise(noise[static_cast<std::size_t>(p)], e.model->options,
+                 e.spec_sd[static_cast<std::size_t>(e.layout.first_part[j] + p)], detail, part);
+    report_offset(pool, channel, p, part);
+    if (p > 0) {
+      out.others[static_cast<std::size_t>(p - 1)] = part;
+      continue;
+    }
+    out.noise_sd = part.noise_sd;
+    out.noise_sd90 = part.noise_sd90;
+    out.offset = part.offset;
+    out.offset_sd = part.offset_sd;
+  }
+}
+
 void report_channel(const Posterior& e, const Pool& pool, int channel, TimeNs t, Detail detail,
                     ChannelEstimate& out) {
   const auto j = static_cast<std::size_t>(channel);
   const auto& c = e.model->channels[j];
   const auto& options = e.model->options;
   const auto& memory = e.channels[j];
-  const double a0 = 0.5 * c.prior_readings;
-  const double gap_s = memory.fused_any ? seconds(t - memory.fused_at) : 0.0;
-  const double keep = options.forget ? std::exp2(-gap_s / c.memory_s) : 1.0;
-  const auto level = [&](Gamma g) {
-    if (!options.learn_precision) return 1.0;
-    forget(g, a0, keep);
-    return mean_of_min_with_one(g);
-  };
+  const double gap_s = memory.fused_any ? seconds(t - memory.judged_at) : 0.0;
+  const Precision precision(e, channel, options.forget ? std::exp2(-gap_s / c.memory_s) : 1.0);
   out.probability.fill(0.0);
   double trusted = 0.0;
+  double since_s = 0.0;
   for (int i = 0; i < pool.size(); ++i) {
     const double w = std::exp(pool[i].log_weight);
     const Condition condition = pool[i].conditions.of(channel);
     out.probability[static_cast<std::size_t>(condition)] += w;
-    if (condition == Condition::kSound && w > 1e-12) trusted += w * level(pool[i].noise[channel]);
+    if (condition != Condition::kSound) since_s += w * pool[i].since[channel];
+    if (condition == Condition::kSound && w > 1e-12) trusted += w * precision.level(pool[i]);
   }
   const double sound = std::min(out.probability[0], 1.0);
+  double unsound = 0.0;
+  for (std::size_t k = 1; k < kConditions; ++k) unsound += out.probability[k];
+  out.unsound_since_ns = unsound > kNegligible ? nanoseconds(since_s / unsound) : 0;
   const Relaxation r = relax(c, options, gap_s);
   const double fresh = (1.0 - sound) * r.recovers;
   const double relaxed = sound * r.stays + fresh;
-  out.trust = std::clamp(trusted * r.stays + fresh * level({a0, a0}), 0.0, 1.0);
+  out.trust = std::clamp(trusted * r.stays + fresh * precision.prior_level(), 0.0, 1.0);
   for (std::size_t k = 1; k < kConditions; ++k)
     out.probability[k] = out.probability[k] * (1.0 - r.recovers) +
                          (options.conditions[k] ? sound * (1.0 - r.stays) / r.ways : 0.0);
   out.probability[0] = relaxed;
-  Gamma noise = average_noise(pool, channel);
-  if (options.forget) forget(noise, a0, keep);
-  report_noise(noise, options, memory.spec_sd, detail, out);
-  report_offset(pool, channel, out);
+  report_parts(e, pool, channel, precision, detail, out);
   out.age_s = memory.seen_any ? seconds(t - memory.seen_at) : -1.0;
-  out.silent = memory.seen_any ? silence(c, out.age_s) : 0.0;
+  out.silent = e.silent(channel, t);
   out.influence = memory.freedom * std::exp(-seconds(t - memory.freedom_at) / e.model->response_s);
   out.out_of_range = memory.out_of_range;
 }
@@ -227,25 +297,34 @@ void share_influence(std::vector<ChannelEstimate>& channels) {
   for (auto& c : channels) c.influence = total > 0.0 ? c.influence / total : 0.0;
 }
 
+// One finding for each part of each channel that the hypothesis has unsound.
+void report_findings(const Hypothesis& h, const Posterior& e, std::vector<Finding>& out) {
+  for (int j = 0; j < e.layout.channels; ++j) {
+    const auto u = static_cast<std::size_t>(j);
+    const Condition condition = h.conditions.of(j);
+    if (condition == Condition::kSound) continue;
+    for (int p = 0; p < e.layout.part_count[u]; ++p) {
+      const int at = h.own_at[u] < 0 ? -1 : h.own_at[u] + p;
+      Finding f{j, condition, 0.0, 0.0, p, nanoseconds(h.since[j])};
+      f.offset = at >= 0 ? h.mean[at] : e.last_values[static_cast<std::size_t>(e.layout.first_part[u] + p)];
+      f.offset_sd = at >= 0 ? std::sqrt(std::max(h.p(at, at), 0.0)) : 0.0;
+      out.push_back(f);
+    }
+  }
+}
+
 // Hypotheses with equal conditions stand next to each other: their modes are summed over.
-void report_explanations(const Pool& pool, int channels, std::vector<Explanation>& out) {
+void report_explanations(const Pool& pool, const Posterior& e, std::vector<Explanation>& out) {
   out.clear();
   for (int begin = 0; begin < pool.size();) {
-    int end = begin;
+    const int end = pool.group_end(begin);
     Explanation found;
     int heaviest = begin;
-    for (; end < pool.size() && pool[end].conditions == pool[begin].conditions; ++end) {
-      found.probability += std::exp(pool[end].log_weight);
-      if (pool[end].log_weight > pool[heaviest].log_weight) heaviest = end;
+    for (int i = begin; i < end; ++i) {
+      found.probability += std::exp(pool[i].log_weight);
+      if (pool[i].log_weight > pool[heaviest].log_weight) heaviest = i;
     }
-    const Hypothesis& h = pool[heaviest];
-    for (int j = 0; j < channels; ++j) {
-      const int at = h.own_at[static_cast<std::size_t>(j)];
-      const Condition condition = h.conditions.of(j);
-      if (condition == Condition::kSound) continue;
-      found.findings.push_back({j, condition, at >= 0 ? h.mean[at] : 0.0,
-                                at >= 0 ? std::sqrt(std::max(h.p(at, at), 0.0)) : 0.0, 0});
-    }
+    report_findings(pool[heaviest], e, found.findings);
     out.push_back(std::move(found));
     begin = end;
   }
@@ -255,6 +334,19 @@ void report_explanations(const Pool& pool, int channels, std::vector<Explanation
 }
 
 }  // namespace
+
+// A channel is all the likelier to have gone quiet the more periods it has missed; of each, a well channel
+// may lose the reading on the way.
+double Posterior::silent(int channel, TimeNs t) const {
+  const auto& c = model->channels[static_cast<std::size_t>(channel)];
+  const auto& memory = channels[static_cast<std::size_t>(channel)];
+  const double period_s = c.on_change ? c.on_change->heartbeat_s : c.period_s;
+  const double age_s = memory.seen_any ? seconds(t - memory.seen_at) : 0.0;
+  if (!(period_s > 0.0) || age_s <= period_s) return 0.0;
+  const double failed = -std::expm1(-age_s / c.fails_every_s);
+  const double log_odds = std::log(failed) - memory.losses.log_lost(age_s / period_s - 1.0);
+  return 1.0 / (1.0 + std::exp(-log_odds));
+}
 
 void Engine::estimate(TimeNs t, Detail detail, Estimate& out) {
   Posterior& e = *impl_;
@@ -286,7 +378,7 @@ void Engine::estimate(TimeNs t, Detail detail, Estimate& out) {
     out.mode[static_cast<std::size_t>(pool[i].mode)] += std::exp(pool[i].log_weight);
   out.hypotheses = pool.size();
   out.explanations.clear();
-  if (detail == Detail::kFull) report_explanations(pool, e.layout.channels, out.explanations);
+  if (detail == Detail::kFull) report_explanations(pool, e, out.explanations);
 }
 
 }  // namespace steelyard::engine

@@ -36,7 +36,7 @@ struct Nursery {
     scene = std::make_unique<Scene>(model);
     likelihood = std::make_unique<Likelihood>(*model, scene->layout);
     births = std::make_unique<Births>(*model, scene->layout, *likelihood);
-    children = std::make_unique<Pool>(scene->layout, Births::kMostChildren);
+    children = std::make_unique<Pool>(scene->layout, Births::most_children(0));
     parent = &scene->random_hypothesis(random, unsound);
     occasion = plain_occasion(*model, kChannel, random.between(-5.0, 5.0));
     occasion.gap_s = kGapS;

@@ -64,7 +64,11 @@ Hypothesis& Scene::random_hypothesis(Random& random, const std::vector<std::pair
   h.mode = Mode::kUsual;
   h.own_at.fill(-1);
   h.dim = layout.fixed;
-  for (int j = 0; j < layout.channels; ++j) h.noise[j] = {random.between(2.0, 9.0), random.between(2.0, 9.0)};
+  for (int j = 0; j < layout.channels; ++j) {
+    h.noise[j] = {random.between(2.0, 9.0), random.between(2.0, 9.0)};
+    h.walk[j] = {1.0, 1.0};
+    h.since[j] = 0.0;
+  }
   const std::vector<double> none(static_cast<std::size_t>(layout.max_dim), 0.0);
   for (const auto& [channel, condition] : unsound) {
     h.conditions.set(channel, condition);

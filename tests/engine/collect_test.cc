@@ -29,7 +29,7 @@ void fill(Scene& scene, Random& random) {
 TEST(Collector, MergesEqualKeysAndOrdersThem) {
   Random random(kSeed);
   Scene scene(random_model(random, 2, 0, 3));
-  Collector collector(*scene.model);
+  Collector collector(*scene.model, scene.layout);
   fill(scene, random);
   std::map<Key, double> weight;
   std::map<Key, double> first_moment;
@@ -53,7 +53,7 @@ TEST(Collector, MergesEqualKeysAndOrdersThem) {
 TEST(Collector, NormalisesAndKeepsTheHeaviestInTheirOrder) {
   Random random(kSeed + 1);
   Scene scene(random_model(random, 2, 0, 3));
-  Collector collector(*scene.model);
+  Collector collector(*scene.model, scene.layout);
   fill(scene, random);
   double sum = 0.0;
   std::vector<std::pair<double, double>> expected;  // weight, and the mean that tells which one it is
@@ -79,7 +79,7 @@ TEST(Collector, NormalisesAndKeepsTheHeaviestInTheirOrder) {
 TEST(Collector, DropsWhatIsUnderTheFloor) {
   Random random(kSeed + 2);
   Scene scene(random_model(random, 2, 0, 3));
-  Collector collector(*scene.model);
+  Collector collector(*scene.model, scene.layout);
   for (const double log_weight : {-3.0, -3.0 - 20.0 * std::log(10.0) - 1.0, -4.0, -400.0})
     scene.random_hypothesis(random).log_weight = log_weight;
   collector.normalise(scene.pool, 10, 1e-20);
@@ -89,7 +89,7 @@ TEST(Collector, DropsWhatIsUnderTheFloor) {
 TEST(Collector, FindsTheHeaviestFirst) {
   Random random(kSeed + 3);
   Scene scene(random_model(random, 2, 0, 3));
-  Collector collector(*scene.model);
+  Collector collector(*scene.model, scene.layout);
   fill(scene, random);
   const auto best = collector.heaviest(scene.pool, 5);
   ASSERT_EQ(best.size(), 5U);
@@ -105,7 +105,7 @@ TEST(Collector, FindsTheHeaviestFirst) {
 TEST(Collector, TiesAtTheCutPushNothingHeavierOut) {
   Random random(kSeed + 5);
   Scene scene(random_model(random, 2, 0, 3));
-  Collector collector(*scene.model);
+  Collector collector(*scene.model, scene.layout);
   for (const double log_weight : {-2.0, -2.0, -2.0, -1.0, -5.0})
     scene.random_hypothesis(random).log_weight = log_weight;
   const double heaviest = scene.pool[3].mean[0];
@@ -123,7 +123,7 @@ TEST(Collector, TiesGoByNameAndNotByOrder) {
     model->channels[0].name = swapped ? "b" : "a";
     model->channels[1].name = swapped ? "a" : "b";
     Scene scene(model);
-    Collector collector(*model);
+    Collector collector(*model, scene.layout);
     for (int j = 0; j < 2; ++j)
       scene.random_hypothesis(random, {{j, Condition::kOffset}}).log_weight = -1.0 + (j == 1 ? 1e-15 : 0.0);
     collector.normalise(scene.pool, 1, 1e-20);

@@ -98,7 +98,7 @@ TEST(Merge, KeepsTheMixturesMoments) {
         pa * (covariance_of(a) + da * da.transpose()) + pb * (covariance_of(b) + db * db.transpose());
     const Gamma ga = a.noise[1];
     const Gamma gb = b.noise[1];
-    merge(a, b, scene.layout.channels);
+    merge(a, b, scene.layout);
     const std::string where = "seed " + std::to_string(kSeed) + ", run " + std::to_string(run);
     EXPECT_NEAR(std::exp(a.log_weight), wa + wb, 1e-14) << where;
     EXPECT_LT((mean_of(a) - mean).norm(), 1e-13) << where;
@@ -116,7 +116,7 @@ TEST(Merge, NextToNothingChangesNothing) {
   const Eigen::VectorXd mean = mean_of(a);
   b.log_weight = a.log_weight - 1000.0;
   const double weight = a.log_weight;
-  merge(a, b, 2);
+  merge(a, b, scene.layout);
   EXPECT_EQ(mean_of(a), mean);
   EXPECT_EQ(a.log_weight, weight);
 }
@@ -157,17 +157,17 @@ TEST(OwnNumbers, ARateComesAndGoesWithItsOffset) {
   const std::array<double, kMaxDim> none{};
   add_own(h, 2, 7.0, 3.0, none.data());
   add_own(h, 0, 5.0, 2.0, none.data());
-  add_rate(h, 0, 0.25);
+  add_rate(h, 0, std::array{0.25});
   const int at = h.own_at[0];
   EXPECT_EQ(h.own_at[2], at + 2);
   EXPECT_EQ(h.mean[at + 1], 0.0);
   EXPECT_EQ(h.p(at + 1, at + 1), 0.25);
   EXPECT_EQ(h.mean[at + 2], 7.0);
   const int dim = h.dim;
-  drop_rate(h, 0);
+  drop_rate(h, 0, 1);
   EXPECT_EQ(h.dim, dim - 1);
   EXPECT_EQ(h.own_at[2], at + 1);
-  add_rate(h, 0, 0.25);
+  add_rate(h, 0, std::array{0.25});
   drop_own(h, 0);
   EXPECT_EQ(h.dim, dim - 2);
   EXPECT_EQ(h.own_at[0], -1);

@@ -106,7 +106,7 @@ TEST(Projector, RegressesAFormulaOverTheSpread) {
   h.mean[0] = 2.0;
   h.p(0, 0) = 0.04;
   Projection out;
-  Projector(*scene.model, scene.layout).project(h, 0, Condition::kSound, 0.0, out);
+  Projector(*scene.model, scene.layout).project(h, 0, 0, Condition::kSound, 0.0, out);
   EXPECT_NEAR(out.mean, 4.04, 1e-12);
   EXPECT_NEAR(out.variance, 0.64, 1e-12);
   EXPECT_NEAR(out.column[0], 0.16, 1e-12);
@@ -125,8 +125,8 @@ TEST(Projector, FormulaThatIsAffineProjectsAsTheAffineLaw) {
     for (int j = 0; j < 2; ++j) {
       Projection x;
       Projection y;
-      Projector(*affine.model, affine.layout).project(a, j, a.conditions.of(j), 0.0, x);
-      Projector(*general.model, general.layout).project(b, j, b.conditions.of(j), 0.0, y);
+      Projector(*affine.model, affine.layout).project(a, j, 0, a.conditions.of(j), 0.0, x);
+      Projector(*general.model, general.layout).project(b, j, 0, b.conditions.of(j), 0.0, y);
       EXPECT_NEAR(x.mean, y.mean, 1e-11);
       EXPECT_NEAR(x.variance, y.variance, 1e-11);
       for (int i = 0; i < a.dim; ++i)
