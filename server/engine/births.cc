@@ -5,6 +5,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <numbers>
 
 #include "engine/repeats.h"
 
@@ -122,8 +123,30 @@ void Births::start_rates(Hypothesis& h, int channel, const Walks& walks) const {
                         static_cast<std::size_t>(layout_.part_count[j])));
 }
 
+// What looked like an offset that walks fast may have been noise all the time: half of the recoveries start
+// with noise of the offset's size. Without them the set is trapped: a recovered channel with its datasheet's
+// noise cannot explain the next reading, and the noise does not grow in a hypothesis whose walk explains all.
+void Births::bear_noisy(const Hypothesis& parent, const Occasion& o, const Switch& to, Pool& children) {
+  const auto j = static_cast<std::size_t>(o.channel);
+  std::array<double, kMaxParts> variance;
+  for (int i = 0; i < layout_.part_count[j]; ++i) {
+    const int at = parent.own_at[j] + i;
+    variance[static_cast<std::size_t>(i)] = parent.mean[at] * parent.mean[at] + parent.p(at, at);
+  }
+  Hypothesis& child = children.append_copy(parent);
+  child.log_weight = to.log_weight;
+  child.conditions.set(o.channel, Condition::kSound);
+  drop_own(child, o.channel);
+  likelihood_.start_noise(child, o.channel, variance, o.time_s);
+  child.log_weight += likelihood_.absorb(child, o).log_likelihood;
+}
+
 bool Births::bear(const Hypothesis& parent, const Occasion& o, const Switch& to, const Walks& walks,
                   Pool& children) {
+  if (to.to == Condition::kSound && learns_speed(parent.conditions.of(o.channel)) &&
+      model_.options.learn_precision) {
+    bear_noisy(parent, o, {to.to, to.log_weight - std::numbers::ln2}, children);
+  }
   Hypothesis& child = children.append_copy(parent);
   child.log_weight = to.log_weight;
   const bool was_sound = parent.conditions.of(o.channel) == Condition::kSound;

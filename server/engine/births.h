@@ -31,7 +31,7 @@ class Births {
               Pool& children, std::span<const Group> groups = {}, std::span<const double> last_values = {});
 
   /// The most children that one parent can have at one reading, in a model with so many groups.
-  static constexpr int most_children(int groups) { return kConditions + 1 + (kConditions - 1) * groups + 1; }
+  static constexpr int most_children(int groups) { return kConditions + 2 + (kConditions - 1) * groups + 1; }
 
  private:
   struct Switch {
@@ -47,6 +47,7 @@ class Births {
                      Pool& children);
   void strike(Hypothesis& h, int channel, Condition condition, double time_s, const Walks& walks,
               std::span<const double> last_values);
+  void bear_noisy(const Hypothesis& parent, const Occasion& o, const Switch& to, Pool& children);
   bool become(Hypothesis& child, const Occasion& o, Condition to, const Walks& walks);
   bool bear(const Hypothesis& parent, const Occasion& o, const Switch& to, const Walks& walks,
             Pool& children);

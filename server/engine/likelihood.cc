@@ -176,6 +176,15 @@ void Likelihood::start_noise(Hypothesis& h, int channel) const {
   h.noise[channel] = {a0, a0};
 }
 
+void Likelihood::start_noise(Hypothesis& h, int channel, std::span<const double> variance,
+                             double time_s) const {
+  constexpr double kShape = 1.5;
+  if (layout_.part_count[static_cast<std::size_t>(channel)] > 1)
+    return vector_.start_noise(h, channel, kShape, variance, time_s);
+  const double spec = projector_.spec_variance(h, channel, 0, time_s);
+  h.noise[channel] = {kShape, kShape * (1.0 + variance.front() / spec)};
+}
+
 void Likelihood::forget_noise(Hypothesis& h, int channel, double keep) const {
   if (layout_.part_count[static_cast<std::size_t>(channel)] > 1) return vector_.forget(h, channel, keep);
   forget(h.noise[channel], prior_shape(model_.channels[static_cast<std::size_t>(channel)]), keep);

@@ -63,6 +63,9 @@ class Likelihood {
 
   /// The channel's precision is what its datasheet says again.
   void start_noise(Hypothesis& h, int channel) const;
+  /// Next to nothing is known of it but the size that it has at present (noise variance by part, over and
+  /// above the datasheet's).
+  void start_noise(Hypothesis& h, int channel, std::span<const double> variance, double time_s) const;
   /// Relaxes it towards that; keep = 1 leaves it.
   void forget_noise(Hypothesis& h, int channel, double keep) const;
 

@@ -273,6 +273,18 @@ void VectorReading::start_noise(Hypothesis& h, int channel) const {
   Eigen::Map<Eigen::MatrixXd>(h.shape + layout_.shape_at[j], d, d).setIdentity();
 }
 
+void VectorReading::start_noise(Hypothesis& h, int channel, double shape, std::span<const double> variance,
+                                double time_s) const {
+  start_noise(h, channel);
+  const auto j = static_cast<std::size_t>(channel);
+  const int d = layout_.part_count[j];
+  h.noise[channel].a = h.noise[channel].b = shape + 0.5 * (d - 1);
+  Eigen::Map<Eigen::MatrixXd> mean(h.shape + layout_.shape_at[j], d, d);
+  for (int i = 0; i < d; ++i)
+    mean(i, i) =
+        1.0 / (1.0 + variance[static_cast<std::size_t>(i)] / projector_.spec_variance(h, channel, i, time_s));
+}
+
 double VectorReading::level(double a, const PartsMatrix& mean) {
   const Eigen::SelfAdjointEigenSolver<PartsMatrix> eigen(mean, Eigen::EigenvaluesOnly);
   const double shape = variance_shape(a, mean.rows());

@@ -38,6 +38,8 @@ class VectorReading {
   /// Relaxes the channel's Wishart towards its prior; keep = 1 leaves it.
   void forget(Hypothesis& h, int channel, double keep) const;
   void start_noise(Hypothesis& h, int channel) const;
+  void start_noise(Hypothesis& h, int channel, double shape, std::span<const double> variance,
+                   double time_s) const;
 
   /// E[min(κ, 1)] in the direction in which the channel is worst, its Wishart being ν/2 = a and `mean`.
   [[nodiscard]] static double level(double a, const PartsMatrix& mean);
