@@ -29,7 +29,10 @@ void forget(Gamma& g, double a0, double keep);
 /// log density at e of Student's t with 2a degrees of freedom, location 0 and scale² `scale2`.
 [[nodiscard]] double log_student_t(double e, double a, double scale2);
 
-/// Average shape and average mean: the merge of two Gammas with weights 1 − p and p.
+/// The merge of two Gammas with weights 1 − p and p, matched in the mean and variance of log κ
+/// (approximately, see gamma.cc). A mean of κ itself would be that of the more precise one, however light:
+/// one per cent of a hypothesis that has just taken a noisy channel for sound would undo all that was learned
+/// of its noise.
 [[nodiscard]] Gamma mix(const Gamma& g, const Gamma& h, double p);
 
 }  // namespace steelyard::engine

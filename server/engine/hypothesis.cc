@@ -2,6 +2,7 @@
 // Storage of hypotheses, growing and shrinking of their vectors, merging by moments.
 #include "engine/hypothesis.h"
 
+#include <Eigen/Dense>
 #include <algorithm>
 #include <cmath>
 #include <cstring>
@@ -209,6 +210,29 @@ void drop_own(Hypothesis& h, int channel) {
   h.own_at[j] = -1;
 }
 
+namespace {
+
+using Shape = Eigen::Matrix<double, Eigen::Dynamic, Eigen::Dynamic, Eigen::ColMajor, kMaxParts, kMaxParts>;
+
+Shape apply(const Shape& symmetric, double (*f)(double)) {
+  const Eigen::SelfAdjointEigenSolver<Shape> eigen(symmetric);
+  const Shape scaled = eigen.eigenvectors() * eigen.eigenvalues().unaryExpr(f).asDiagonal();
+  return scaled.lazyProduct(eigen.eigenvectors().transpose());
+}
+
+// The mean of their logarithms, as for scalar channels (log-Euclidean mean: Arsigny et al. 2007).
+void mix_shapes(double* into, const double* from, int parts, double p) {
+  if (std::equal(into, into + parts * parts, from)) return;
+  const auto log = [](double v) { return std::log(std::max(v, 1e-300)); };
+  const auto exp = [](double v) { return std::exp(v); };
+  Eigen::Map<Eigen::MatrixXd> a(into, parts, parts);
+  const Shape b = Eigen::Map<const Eigen::MatrixXd>(from, parts, parts);
+  const Shape mean = (1.0 - p) * apply(a, log) + p * apply(b, log);
+  a = apply(mean, exp);
+}
+
+}  // namespace
+
 void merge(Hypothesis& into, const Hypothesis& from, const Layout& layout) {
   const double total = log_sum(into.log_weight, from.log_weight);
   const double p = std::exp(from.log_weight - total);
@@ -227,7 +251,9 @@ void merge(Hypothesis& into, const Hypothesis& from, const Layout& layout) {
     into.walk[j] = mix(into.walk[j], from.walk[j], p);
     into.since[j] += p * (from.since[j] - into.since[j]);
   }
-  for (int i = 0; i < layout.shape_size; ++i) into.shape[i] += p * (from.shape[i] - into.shape[i]);
+  for (std::size_t j = 0; j < static_cast<std::size_t>(layout.channels); ++j)
+    if (layout.shape_at[j] >= 0)
+      mix_shapes(into.shape + layout.shape_at[j], from.shape + layout.shape_at[j], layout.part_count[j], p);
   into.log_weight = total;
 }
 

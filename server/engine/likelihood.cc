@@ -17,6 +17,17 @@ constexpr double kCoarse = 0.3;  // resolution over predicted sd from which the 
 constexpr int kFixedPointSteps = 8;
 constexpr double kFixedPointTolerance = 1e-2;
 
+// After a variance has fallen by many orders its covariances can exceed what it allows (Cauchy–Schwarz).
+void bound_covariances(Hypothesis& h) {
+  for (int i = 0; i < h.dim; ++i) {
+    h.p(i, i) = std::max(h.p(i, i), 0.0);
+    for (int k = 0; k < i; ++k) {
+      const double most = std::sqrt(h.p(i, i)) * std::sqrt(h.p(k, k));
+      h.p(i, k) = h.p(k, i) = std::clamp(h.p(i, k), -most, most);
+    }
+  }
+}
+
 }  // namespace
 
 double Likelihood::noise_variance(const Gamma& g, double spec_variance) const {
@@ -49,6 +60,9 @@ double Likelihood::log_regular(double e, const Gamma& g, double total_variance, 
 
 // Updates g and returns the noise variance at the fixed point of (noise variance, gain), which is scalar.
 // second_moment: of (y − expected)² given what the reading tells, as a function of the total variance.
+// The plain variational update counts every reading as half a degree of freedom, however little of it is
+// noise: the Fisher information of a residual of variance s + r on log r is ½·(r/(s + r))². What the gain
+// takes away is left out of both parameters (it would be an observation of just what is believed already).
 template <typename SecondMoment>
 double Likelihood::learn(Gamma& g, double s, double r, double spec, double weight,
                          const SecondMoment& second_moment) const {
@@ -56,8 +70,9 @@ double Likelihood::learn(Gamma& g, double s, double r, double spec, double weigh
   Gamma next = g;
   for (int i = 0; i < kFixedPointSteps; ++i) {
     const double gain = s / (s + r);
-    const double squared = (1.0 - gain) * (1.0 - gain) * second_moment(s + r) + s * (1.0 - gain);
-    next = {g.a + 0.5 * weight, g.b + 0.5 * weight * squared / spec};
+    const double seen = (1.0 - gain) * (1.0 - gain);
+    const double squared = seen * second_moment(s + r) + s * (1.0 - gain) - (1.0 - seen) * r;
+    next = {g.a + 0.5 * weight * seen, std::max(g.b + 0.5 * weight * squared / spec, 0.5 * g.b)};
     const double before = r;
     r = noise_variance(next, spec);
     if (std::fabs(r - before) <= kFixedPointTolerance * before) break;
@@ -101,12 +116,19 @@ void Likelihood::move(Hypothesis& h, const Step& step) {
                          step.weight * (1.0 - step.weight) * step.shift * step.shift) /
                         (step.total_variance * step.total_variance);
   const double* column = expected_.column.data();
+  constexpr double kLost = 1e-10;  // of a variance is left: its covariances may be rounding errors
+  bool lost = false;
   for (int i = 0; i < h.dim; ++i) {
     h.mean[i] += by_mean * column[i];
-    const double scaled = by_cov * column[i];
     double* row = h.cov + i * h.dim;
-    for (int k = 0; k < h.dim; ++k) row[k] += scaled * column[k];
+    const double variance = row[i];
+    for (int k = 0; k <= i; ++k) {
+      row[k] += by_cov * (column[i] * column[k]);
+      h.cov[k * h.dim + i] = row[k];
+    }
+    lost = lost || row[i] < kLost * variance;
   }
+  if (lost) bound_covariances(h);
 }
 
 // With the noise that the likelihood itself uses, so that the factor of repeats.h corrects just that

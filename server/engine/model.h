@@ -113,7 +113,7 @@ struct ChannelModel : PartModel {
   double recovers_in_s = 1000.0;
   double changes_in_s = 10.0;  ///< mean time to each other unsound condition
   double memory_s = 5.0;       ///< half-life of what was learned about the noise
-  double strays = 0.002;       ///< probability that a reading is a wild value
+  double strays = 0.001;       ///< probability that a reading is a wild value
   bool live_zero = false;  ///< 4-20 mA: the timeline decodes NAMUR NE 43 failure signals (limits from memory)
   double prior_readings = 10.0;  ///< 2·a0: how many readings the datasheet's sd is worth
 

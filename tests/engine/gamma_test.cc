@@ -4,6 +4,8 @@
 
 #include <gtest/gtest.h>
 
+#include <boost/math/special_functions/trigamma.hpp>
+
 #include <boost/math/distributions/students_t.hpp>
 #include <boost/math/special_functions/gamma.hpp>
 #include <boost/multiprecision/cpp_bin_float.hpp>
@@ -109,10 +111,21 @@ TEST(Forgetting, RelaxesTowardsThePrior) {
   EXPECT_DOUBLE_EQ(g.b, 5.0);
 }
 
-TEST(Mixing, AveragesShapeAndMean) {
-  const Gamma g = mix({2.0, 4.0}, {6.0, 3.0}, 0.25);
-  EXPECT_DOUBLE_EQ(g.a, 3.0);
-  EXPECT_DOUBLE_EQ(g.mean(), 0.75 * 0.5 + 0.25 * 2.0);
+// Against the variance of log κ by the trigamma function.
+TEST(Mixing, MatchesTheLogarithmsMeanAndVariance) {
+  const Gamma g = mix({4.0, 8.0}, {6.0, 3.0}, 0.25);
+  EXPECT_DOUBLE_EQ(g.mean(), std::pow(0.5, 0.75) * std::pow(2.0, 0.25));
+  const double apart = std::log(4.0);
+  const double variance =
+      0.75 * boost::math::trigamma(4.0) + 0.25 * boost::math::trigamma(6.0) + 0.75 * 0.25 * apart * apart;
+  EXPECT_NEAR(boost::math::trigamma(g.a), variance, 0.03 * variance);
+}
+
+TEST(Mixing, ALightPartDoesNotUndoWhatWasLearned) {
+  const Gamma noisy{100.0, 1e6};
+  const Gamma g = mix(noisy, {5.0, 5.0}, 0.01);
+  EXPECT_NEAR(g.mean(), noisy.mean(), 0.1 * noisy.mean());
+  EXPECT_LT(g.a, 3.0);
 }
 
 }  // namespace

@@ -103,8 +103,14 @@ TEST(Merge, KeepsTheMixturesMoments) {
     EXPECT_NEAR(std::exp(a.log_weight), wa + wb, 1e-14) << where;
     EXPECT_LT((mean_of(a) - mean).norm(), 1e-13) << where;
     EXPECT_LT((covariance_of(a) - cov).norm(), 1e-13) << where;
-    EXPECT_NEAR(a.noise[1].a, pa * ga.a + pb * gb.a, 1e-13) << where;
-    EXPECT_NEAR(a.noise[1].mean(), pa * ga.mean() + pb * gb.mean(), 1e-13) << where;
+    const double la = std::log(ga.mean());
+    const double lb = std::log(gb.mean());
+    const double log_mean = pa * la + pb * lb;
+    const auto spread = [](double shape) { return 1.0 / shape + 0.5 / (shape * shape); };
+    const double variance = pa * (spread(ga.a) + (la - log_mean) * (la - log_mean)) +
+                            pb * (spread(gb.a) + (lb - log_mean) * (lb - log_mean));
+    EXPECT_NEAR(std::log(a.noise[1].mean()), log_mean, 1e-12) << where;
+    EXPECT_NEAR(spread(a.noise[1].a), variance, 1e-12) << where;
   }
 }
 

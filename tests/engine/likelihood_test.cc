@@ -113,9 +113,11 @@ TEST(Absorb, LearnsThePrecisionAndUsesWhatItLearned) {
     const Gamma& g = c.hypothesis->noise[c.channel];
     const double r = c.spec / mean_below_one(g);
     c.expect_mixture(1.0, c.s + r);
-    EXPECT_NEAR(g.a, c.noise.a + 0.5, 1e-12);
-    const double kept = c.e * r / (c.s + r);
-    EXPECT_NEAR(g.b, c.noise.b + 0.5 * (kept * kept + c.s * r / (c.s + r)) / c.spec, 5e-3 * g.b);
+    // The score and the Fisher information of log κ in N(e; 0, s + spec/κ), at the κ that comes out.
+    const double share = r / (c.s + r);
+    EXPECT_NEAR(g.a, c.noise.a + 0.5 * share * share, 5e-3 * g.a);
+    const double surprise = c.e * c.e / (c.s + r) - 1.0;
+    EXPECT_NEAR(g.b, c.noise.b + 0.5 * (share * share + share * surprise) * r / c.spec, 1e-2 * g.b);
   }
 }
 

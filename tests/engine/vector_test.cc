@@ -163,8 +163,10 @@ TEST(Vector, AnOffsetOfOnePartIsFoundWithItsSize) {
 
 TEST(Vector, GrownNoiseIsLearnedInBothParts) {
   const Estimate e = after_fault(0.0, 10.0);
-  for(double p:e.channels[0].probability) { printf("%g ",p); }
-  printf("trust %g\n",e.channels[0].trust);
+  for (double p : e.channels[0].probability) {
+    printf("%g ", p);
+  }
+  printf("trust %g\n", e.channels[0].trust);
   EXPECT_LT(e.channels[0].trust, 0.1);
   EXPECT_NEAR(e.channels[0].noise_sd, 1.0, 0.35);
   EXPECT_NEAR(e.channels[0].others[0].noise_sd, 2.0, 0.7);
