@@ -8,21 +8,28 @@ namespace {
 
 constexpr double kCommonShare = 0.5;
 
-void fill(engine::ChannelModel& out, const Channel& c, const Machine& machine) {
-  out.name = c.name;
-  out.modulo = c.modulo;
-  if (machine.declares_period) out.period_s = c.period_s;
+void fill(engine::PartModel& out, const Channel& c) {
   out.sd = c.sd;
   out.lo = c.lo;
   out.hi = c.hi;
   out.resolution = c.resolution;
 }
 
+void fill(engine::ChannelModel& out, const Channel& c, const Machine& machine) {
+  out.name = c.name;
+  out.modulo = c.modulo;
+  if (machine.declares_period) out.period_s = c.period_s;
+  fill(out, c);
+  for (auto& part : out.others) fill(part, c);
+}
+
 // What a row adds to a channel's entry in the rig.
 void add_declared(engine::ChannelModel& out, const Channel& c, std::size_t j, const Row& row,
                   const Settings& settings) {
   const Declaration& d = row.declared;
-  if (!d.sd_factors.empty()) out.sd *= d.sd_factors[j];
+  const double factor = d.sd_factors.empty() ? 1.0 : d.sd_factors[j];
+  out.sd *= factor;
+  for (auto& part : out.others) part.sd *= factor;
   out.fails_every_s = 3600.0 * (d.fails_every_h > 0.0 ? d.fails_every_h : settings.fails_every_h);
   if (d.on_change && c.deadband > 0.0) out.on_change = engine::OnChange{c.deadband, 0.0};
   if (d.time_sd) out.time_sd_s = c.time_jitter_s;

@@ -34,6 +34,7 @@ const std::vector<Machine>& machines() {
     std::vector<Machine> list;
     list.push_back(make_trolley());
     list.push_back(make_basin());
+    list.push_back(make_cart());
     list.push_back(make_plant());
     return list;
   }();

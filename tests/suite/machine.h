@@ -81,6 +81,7 @@ struct Machine {
 
 [[nodiscard]] Machine make_trolley();
 [[nodiscard]] Machine make_basin();
+[[nodiscard]] Machine make_cart();
 [[nodiscard]] Machine make_plant();
 
 /// The row's channels: the machine's, with the row's traits.

@@ -15,9 +15,10 @@ namespace {
 constexpr const char* kHead = R"(<!doctype html>
 <html lang="en"><head><meta charset="utf-8"><meta name="viewport" content="width=device-width">
 <title>Fault table</title><style>
-:root{color-scheme:light dark;--ink:#1d2433;--paper:#fbfaf7;--line:#d8d4ca;--bar:#4d7ea8;--broken:#b4472f;--bound:#8a8170}
-@media (prefers-color-scheme:dark){:root{--ink:#e4e1d8;--paper:#171a20;--line:#3a3f49;--bar:#7fb0d8;--broken:#e58668;
---bound:#a59c88}}
+:root{color-scheme:light dark;--ink:#1d2433;--paper:#fbfaf7;--line:#d8d4ca;--bar:#4d7ea8;
+--broken:#b4472f;--bound:#8a8170}
+@media (prefers-color-scheme:dark){:root{--ink:#e4e1d8;--paper:#171a20;--line:#3a3f49;--bar:#7fb0d8;
+--broken:#e58668;--bound:#a59c88}}
 body{margin:2rem;max-width:90rem;background:var(--paper);color:var(--ink);font:15px/1.45 sans-serif}
 h2{margin:2.5rem 0 .3rem}p{margin:.3rem 0;max-width:60rem}
 .wide{overflow-x:auto}table{border-collapse:collapse;margin-top:.8rem;font-size:13px}
@@ -34,7 +35,8 @@ for (const table of document.querySelectorAll('table'))
   table.querySelectorAll('th button').forEach((button, column) => button.addEventListener('click', () => {
     const body = table.tBodies[0], up = button.dataset.up !== '1';
     button.dataset.up = up ? '1' : '0';
-    const key = row => { const c = row.cells[column]; return c.dataset.v === undefined ? c.textContent : +c.dataset.v; };
+    const key = row => { const c = row.cells[column];
+      return c.dataset.v === undefined ? c.textContent : +c.dataset.v; };
     [...body.rows].sort((a, b) => { const x = key(a), y = key(b);
       return (x < y ? -1 : x > y ? 1 : 0) * (up ? 1 : -1); }).forEach(row => body.append(row));
   }));

@@ -11,6 +11,7 @@ namespace steelyard::suite {
 
 [[nodiscard]] std::vector<Row> trolley_rows();
 [[nodiscard]] std::vector<Row> basin_rows();
+[[nodiscard]] std::vector<Row> cart_rows();
 [[nodiscard]] std::vector<Row> plant_rows();
 
 /// A row of these faults, its class found by what they are: none healthy, more than one pair, a drift of at
