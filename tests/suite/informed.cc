@@ -99,6 +99,8 @@ class Informed final : public Policy {
   void take_part(int part, int j, const Fault* f, Note n, int step, Filter& filter) const {
     const Channel& c = channel(j);
     const double t_s = step * run().machine.step_s;
+    const double y = value(part, step);
+    if (c.modulo == 0.0 && (y <= c.lo || y >= c.hi)) return;  // an end of the range says little
     const double factor = f && f->kind == Kind::kNoise ? f->size : 1.0;
     double r = factor * factor * c.sd * c.sd + rounding(c);
     Expected x = filter.expect(part);
@@ -107,29 +109,32 @@ class Informed final : public Policy {
       if (!f) return fuse_lag(*e, share_of(c.period_s, c.damping_s), damped_noise(c), step, filter);
       if (f->kind == Kind::kLag)
         return fuse_lag(*e, share_of(c.period_s, f->size * run().machine.response_s), 0.0, step, filter);
-      if (f->kind == Kind::kScale) {
-        r += scaled(*e, x, filter);
-      } else {
-        const double law = shape(*f, run().machine.response_s, t_s);
-        x.h[e->index] = law;
-        x.value += law * filter.x[e->index];
-      }
+      if (f->kind == Kind::kScale) return fuse_scaled(*e, r, step, filter);
+      const double law = shape(*f, run().machine.response_s, t_s);
+      x.h[e->index] = law;
+      x.value += law * filter.x[e->index];
     }
     if (n == Note::kHeld || n == Note::kQuiet) return fuse_interval(part, j, x, r, step, filter);
-    filter.update(x.h, residual(c, value(part, step), x.value), r);
+    filter.update(x.h, residual(c, y, x.value), r);
   }
 
-  // y = (1 + a)·h: value, Jacobian, and what the product of the two deviations adds to the variance (exact
-  // for normal deviations: var·var + cov²).
-  static double scaled(const Extra& e, Expected& x, const Filter& filter) {
-    const double a = filter.x[e.index];
-    const double variance = filter.variance(x.h);
-    const double shared = (x.h * filter.P.col(e.index)).value();
-    const double shown = x.value;
-    x.value = (1.0 + a) * shown + shared;
-    x.h *= 1.0 + a;
-    x.h[e.index] = shown;
-    return variance * filter.P(e.index, e.index) + shared * shared;
+  // y = (1 + a)·shown, linearised about the outcome by iteration (Bell & Cathey 1993): a reversed sign is far
+  // from where it starts.
+  void fuse_scaled(const Extra& e, double r, int step, Filter& filter) const {
+    constexpr int kIterations = 6;
+    const Filter before = filter;
+    const double y = value(e.part, step);
+    for (int i = 0; i < kIterations; ++i) {
+      Expected x = filter.expect(e.part);
+      const double a = filter.x[e.index];
+      const double shown = x.value;
+      x.h *= 1.0 + a;
+      x.h[e.index] = shown;
+      const double expected = (1.0 + a) * shown + x.h.dot(before.x - filter.x);
+      filter.x = before.x;
+      filter.P = before.P;
+      filter.update(x.h, residual(channel(e.channel), y, expected), r);
+    }
   }
 
   // Noise ahead of the damping, as faults.cc makes it.
