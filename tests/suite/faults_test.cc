@@ -77,7 +77,9 @@ TEST_F(Trolley, ADeadbandSendsWhatHasMovedByIt) {
       continue;
     }
     ASSERT_EQ(r.note[0][i], Note::kFresh);
-    if (sent > 0) EXPECT_GE(std::fabs(r.value[0][i] - last), 0.04 - 1e-9);
+    if (sent > 0) {
+      EXPECT_GE(std::fabs(r.value[0][i] - last), 0.04 - 1e-9);
+    }
     last = r.value[0][i];
     ++sent;
   }

@@ -210,8 +210,8 @@ TEST_F(ByHand, MidValueFusesTheMiddleOne) {
 }
 
 TEST_F(ByHand, GateShutsOutWhatIsFarOff) {
-  EXPECT_EQ(first({9.0, 0.1, -0.1, kNoReading}, Reference::kGated),
-            first({kNoReading, 0.1, -0.1, kNoReading}, Reference::kFixed));
+  EXPECT_EQ(first({9.0, 0.1, 0.05, kNoReading}, Reference::kGated),
+            first({kNoReading, 0.1, 0.05, kNoReading}, Reference::kFixed));
 }
 
 }  // namespace
