@@ -8,7 +8,7 @@
 #include <vector>
 
 #include "engine/engine.h"
-#include "suite/runner.h"
+#include "suite/trolley.h"
 
 namespace steelyard::engine {
 

@@ -7,7 +7,7 @@
 
 #include "engine/hypothesis.h"
 #include "engine/likelihood.h"
-#include "suite/plant.h"
+#include "suite/random.h"
 
 namespace steelyard::engine {
 

@@ -6,7 +6,7 @@
 
 #include <Eigen/Dense>
 
-#include "suite/plant.h"
+#include "suite/random.h"
 
 namespace steelyard::engine {
 namespace {

@@ -112,7 +112,7 @@ TEST(Extremes, AxisIsFoundAgainAfterALongGap) {
         engine.estimate(t, Detail::kBrief, e);
         for (const auto& c : e.channels) least = std::min(least, c.trust);
         if (step < kBreak + 10) continue;
-        const double error = e.states[0].mean - truth.position[static_cast<std::size_t>(step)];
+        const double error = e.states[0].mean - truth.state[static_cast<std::size_t>(step)][0];
         ASSERT_LT(std::fabs(error), 6.0 * e.states[0].sd);
         ASSERT_LT(e.states[0].sd, 0.02);
       }

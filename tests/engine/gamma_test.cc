@@ -12,7 +12,7 @@
 #include <cmath>
 
 #include "outside/csv.h"
-#include "suite/plant.h"
+#include "suite/random.h"
 
 namespace steelyard::engine {
 namespace {

@@ -5,7 +5,7 @@
 
 #include <cmath>
 
-#include "suite/plant.h"
+#include "suite/random.h"
 
 namespace steelyard::engine {
 namespace {

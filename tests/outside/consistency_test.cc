@@ -8,7 +8,7 @@
 
 #include "outside/csv.h"
 #include "outside/machines.h"
-#include "suite/plant.h"
+#include "suite/random.h"
 
 namespace steelyard::outside {
 namespace {

@@ -6,7 +6,7 @@
 #include <numeric>
 
 #include "outside/machines.h"
-#include "suite/runner.h"
+#include "suite/trolley.h"
 
 namespace steelyard::outside {
 namespace {

@@ -6,7 +6,7 @@
 #include <cstdio>
 
 #include "outside/machines.h"
-#include "suite/runner.h"
+#include "suite/trolley.h"
 
 namespace steelyard::outside {
 namespace {
@@ -15,10 +15,10 @@ using suite::Kind;
 using suite::Row;
 
 constexpr std::uint64_t kSeeds = 5;
-constexpr std::array<bool, 4> kAll{true, true, true, true};
+const std::vector<bool> kAll{true, true, true, true};
 
 struct Run {
-  suite::Track track;
+  suite::Positions track;
   double least_trust = 1.0;
 };
 
@@ -75,7 +75,7 @@ Hurt hurt_by(const Row& row) {
 
 // Position sensors a (sd 0.01 m) and b (0.03 m), and the speed sensor to judge between them.
 void expect_both_handled_alike(double a_sds, double b_sds) {
-  constexpr std::array<bool, 4> kTwo{true, true, false, true};
+  const std::vector<bool> kTwo{true, true, false, true};
   const Hurt a = hurt_by({"offset on a", {{0, Kind::kOffset, a_sds}}, kTwo, true});
   const Hurt b = hurt_by({"offset on b", {{1, Kind::kOffset, b_sds}}, kTwo, true});
   EXPECT_GT(a.fixed, 2.0 * b.fixed);

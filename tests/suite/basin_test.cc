@@ -6,7 +6,7 @@
 #include <algorithm>
 #include <cmath>
 
-#include "suite/plant.h"
+#include "suite/random.h"
 #include "timeline/timeline.h"
 
 namespace steelyard::suite {

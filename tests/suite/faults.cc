@@ -5,135 +5,198 @@
 #include <cmath>
 #include <numbers>
 
+#include "suite/random.h"
+
 namespace steelyard::suite {
 namespace {
 
-std::string label(const char* what, int channel) {
-  return std::string(what) + " on " + kNames[static_cast<std::size_t>(channel)];
-}
+constexpr double kStraysShare = 0.1;
+constexpr int kHoldCounts = 2;
 
-void add_single(std::vector<Row>& rows, const char* what, Kind kind, double size, bool on_a = true,
-                bool on_d = true) {
-  rows.push_back({label(what, 0), {{0, kind, size}}, {true, true, true, true}, on_a});
-  rows.push_back({label(what, 3), {{3, kind, size}}, {true, true, true, true}, on_d});
-}
+double round_to(double value, double step) { return step > 0.0 ? std::round(value / step) * step : value; }
 
-std::vector<Row> make_table() {
-  std::vector<Row> rows;
-  rows.push_back({"none", {}, {true, true, true, true}, true});
-  add_single(rows, "frozen", Kind::kFrozen, 0);
-  add_single(rows, "stuck with noise", Kind::kStuck, 0);
-  add_single(rows, "offset 20 sd", Kind::kOffset, 20);
-  add_single(rows, "offset 4 sd", Kind::kOffset, 4);
-  add_single(rows, "drift 2 sd/s", Kind::kDrift, 2);
-  add_single(rows, "drift 0.3 sd/s", Kind::kDrift, 0.3);
-  add_single(rows, "drift 0.1 sd/s", Kind::kDrift, 0.1, false, false);
-  add_single(rows, "noise x10", Kind::kNoise, 10);
-  add_single(rows, "10 % strays", Kind::kStrays, 100, false, false);
-  add_single(rows, "scale x1.2", Kind::kScale, 1.2, true, false);
-  add_single(rows, "scale x-1", Kind::kScale, -1, true, false);
-  add_single(rows, "lag 0.5 s", Kind::kLag, 0.5, true, false);
-  add_single(rows, "hum 20 sd 0.7 Hz", Kind::kHum, 20);
-  add_single(rows, "on-off 2 s 30 sd", Kind::kOnOff, 30, false, false);
-  add_single(rows, "garbage", Kind::kGarbage, 0);
-  add_single(rows, "silence", Kind::kSilence, 0, false, false);
-  const std::array<bool, 4> all{true, true, true, true};
-  const std::array<bool, 4> abd{true, true, false, true};
-  const std::array<bool, 4> ab{true, true, false, false};
-  rows.push_back({"offset a + frozen d", {{0, Kind::kOffset, 20}, {3, Kind::kFrozen, 0}}, all, true});
-  rows.push_back({"frozen a + offset b", {{0, Kind::kFrozen, 0}, {1, Kind::kOffset, 20}}, all, true});
-  rows.push_back({"drift a + drift b", {{0, Kind::kDrift, 2}, {1, Kind::kDrift, 2, 22, 40}}, all, true});
-  rows.push_back({"offset 60 a + 20 b", {{0, Kind::kOffset, 60}, {1, Kind::kOffset, 20}}, all, true});
-  rows.push_back({"a,b,d: offset a", {{0, Kind::kOffset, 20}}, abd, true});
-  rows.push_back({"a,b,d: offset b", {{1, Kind::kOffset, 20}}, abd, true});
-  rows.push_back({"a,b,d: drift a", {{0, Kind::kDrift, 2}}, abd, true});
-  rows.push_back({"a,b: offset a", {{0, Kind::kOffset, 20}}, ab, true});
-  rows.push_back({"a,b: frozen a", {{0, Kind::kFrozen, 0}}, ab, true});
-  return rows;
-}
-
-double round_to(double value, double step) { return std::round(value / step) * step; }
-
-// A fault's own memory: what it needs of the past.
+// What a part of a channel needs of its past.
 struct Memory {
-  double held = 0.0;
-  double lagged = 0.0;
+  double held = 0.0;      // last reading before the fault
+  double lagged = 0.0;    // the fault's first-order lag
+  double damped = 0.0;    // the transmitter's own
+  double reported = 0.0;  // last value sent
   bool begun = false;
+  bool sent = false;
 };
 
-double faulty(const Fault& f, double truth, double noise, double t, Memory& memory, Random& random,
-              bool& wild) {
-  const auto j = static_cast<std::size_t>(f.channel);
-  const double sd = kSd[j];
-  const double since = t - f.from_s;
-  switch (f.kind) {
-    case Kind::kNone:
-      return truth + noise;
-    case Kind::kFrozen:
-      return memory.held;
-    case Kind::kStuck:
-      return memory.held + noise;
-    case Kind::kOffset:
-      return truth + noise + f.size * sd;
-    case Kind::kDrift:
-      return truth + noise + f.size * sd * since;
-    case Kind::kNoise:
-      return truth + noise * f.size;
-    case Kind::kStrays:
-      wild = random.uniform() < 0.1;
-      return wild ? truth + random.between(-f.size, f.size) * sd : truth + noise;
-    case Kind::kScale:
-      return truth * f.size + noise;
-    case Kind::kLag:
-      return memory.lagged + noise;
-    case Kind::kHum:
-      return truth + noise + f.size * sd * std::sin(2 * std::numbers::pi * 0.7 * since);
-    case Kind::kOnOff:
-      return truth + noise + (static_cast<int>(since / 2.0) % 2 == 0 ? f.size * sd : 0.0);
-    case Kind::kGarbage:
-      return random.between(-kRange[j], kRange[j]);
-    case Kind::kSilence:
-      return kNoReading;
+double share_of(double step_s, double time_constant_s) { return 1.0 - std::exp(-step_s / time_constant_s); }
+
+class Sensor {
+ public:
+  Sensor(const Machine& machine, const Channel& channel, Random& random)
+      : machine_(machine), channel_(channel), random_(random) {}
+
+  // A part's reading under fault f (or none), unrounded.
+  double faulty(const Fault* f, double x, double noise, double t_s, Memory& memory, bool wild) {
+    const double sd = channel_.sd;
+    if (!f) return x + noise;
+    if (adds(f->kind)) return x + noise + f->size * sd * shape(*f, machine_.response_s, t_s);
+    switch (f->kind) {
+      case Kind::kFrozen:
+        return memory.held;
+      case Kind::kStuck:
+        return memory.held + noise;
+      case Kind::kHold:
+        return memory.held + channel_.resolution * std::floor(random_.between(-kHoldCounts, kHoldCounts + 1));
+      case Kind::kNoise:
+        return x + noise * f->size;
+      case Kind::kStrays:
+        return wild ? x + random_.between(-f->size, f->size) * sd : x + noise;
+      case Kind::kScale:
+        return x * f->size + noise;
+      case Kind::kLag:
+        return memory.lagged + noise;
+      case Kind::kGarbage:
+        return random_.between(channel_.lo, channel_.hi);
+      case Kind::kSilence:
+        return kNoReading;
+      default:
+        return x + noise;
+    }
   }
-  return truth + noise;
+
+  double part(const Fault* f, double x, double jitter, double t_s, Memory& memory, bool& wild) {
+    const double noise = channel_.sd * random_.normal();
+    if (f && f->kind == Kind::kStrays) wild = random_.uniform() < kStraysShare;
+    // A lag starts from the true value.
+    if (f && f->kind == Kind::kLag)
+      memory.lagged += (x - memory.lagged) * share_of(channel_.period_s, f->size * machine_.response_s);
+    else
+      memory.lagged = x;
+    double y = faulty(f, x, noise, t_s, memory, wild) + jitter;
+    if (channel_.damping_s > 0.0 && !std::isnan(y)) y = damped(y, x, noise, memory);
+    if (!f) memory.held = y;
+    memory.begun = true;
+    return std::isnan(y) ? y : within(round_to(y, channel_.resolution));
+  }
+
+  [[nodiscard]] const Channel& channel() const { return channel_; }
+
+ private:
+  // The noise ahead of the damping is such that what comes out has the channel's sd.
+  double damped(double y, double x, double noise, Memory& memory) const {
+    const double share = share_of(channel_.period_s, channel_.damping_s);
+    const double louder = std::sqrt((2.0 - share) / share);
+    if (!memory.begun) memory.damped = x + noise;
+    memory.damped += (y + noise * (louder - 1.0) - memory.damped) * share;
+    return memory.damped;
+  }
+  [[nodiscard]] double within(double y) const {
+    if (channel_.modulo > 0.0) return y - channel_.modulo * std::floor((y - channel_.lo) / channel_.modulo);
+    return std::clamp(y, channel_.lo, channel_.hi);
+  }
+
+  const Machine& machine_;
+  const Channel& channel_;
+  Random& random_;
+};
+
+// Report by exception: a value goes out when it has moved by the deadband.
+Note report(const Channel& c, Memory& memory, double& y) {
+  if (std::isnan(y)) return Note::kNone;
+  if (c.deadband <= 0.0) return Note::kFresh;
+  if (!memory.sent || std::fabs(y - memory.reported) >= c.deadband) {
+    memory.sent = true;
+    memory.reported = y;
+    return Note::kFresh;
+  }
+  y = c.holds > 0.0 ? memory.reported : kNoReading;
+  return c.holds > 0.0 ? Note::kHeld : Note::kQuiet;
+}
+
+bool measures(const Machine& machine, const Channel& c, int step) {
+  const int every = std::max(1, static_cast<int>(std::lround(c.period_s / machine.step_s)));
+  return step % every == 0;
+}
+
+// How far a part's true value moves within an error of the time stamp.
+double moved(const Machine& machine, const Truth& truth, int part, int step, double seconds) {
+  if (seconds == 0.0 || step == 0) return 0.0;
+  const auto u = static_cast<std::size_t>(step);
+  return (machine.shows(part, truth.state[u]) - machine.shows(part, truth.state[u - 1])) / machine.step_s *
+         seconds;
 }
 
 }  // namespace
 
-const std::vector<Row>& table() {
-  static const std::vector<Row> rows = make_table();
-  return rows;
+bool adds(Kind kind) {
+  return kind == Kind::kOffset || kind == Kind::kDrift || kind == Kind::kHum || kind == Kind::kOnOff ||
+         kind == Kind::kFoam;
 }
 
-const Fault* fault_at(const Row& row, int channel, int step) {
-  const double t = step * kStepS;
+double shape(const Fault& fault, double response_s, double t_s) {
+  const double since = (t_s - fault.from_s) / response_s;
+  switch (fault.kind) {
+    case Kind::kOffset:
+      return 1.0;
+    case Kind::kDrift:
+      return since;
+    case Kind::kHum:
+      return std::sin(2.0 * std::numbers::pi * 0.7 * since);
+    case Kind::kOnOff:
+      return static_cast<int>(since / 2.0) % 2 == 0 ? 1.0 : 0.0;
+    case Kind::kFoam:
+      return 1.0 - std::exp(-since / 2.0);
+    default:
+      return 0.0;
+  }
+}
+
+const Fault* fault_at(const Row& row, int channel, double t_s) {
   for (const auto& f : row.faults)
-    if (f.channel == channel && t >= f.from_s && t < f.to_s) return &f;
+    if (f.channel == channel && t_s >= f.from_s && t_s < f.to_s) return &f;
   return nullptr;
 }
 
-Readings read(const Truth& truth, const Row& row, std::uint64_t seed) {
+Row resolved(const Machine& machine, const Row& row, const Truth& truth) {
+  double later = 0.0;
+  if (row.at_change) {
+    const auto change =
+        std::lower_bound(truth.changes_s.begin(), truth.changes_s.end(), machine.fault_from_s);
+    if (change != truth.changes_s.end()) later = *change + 0.3 * machine.response_s - machine.fault_from_s;
+  }
+  Row out = row;
+  for (auto& f : out.faults) {
+    if (std::isnan(f.from_s)) f.from_s = machine.fault_from_s + later;
+    if (std::isnan(f.to_s)) f.to_s = machine.fault_to_s + later;
+  }
+  return out;
+}
+
+Readings read(const Machine& machine, const Truth& truth, const Row& row, std::uint64_t seed) {
+  const auto channels = channels_of(machine, row);
+  const auto steps = static_cast<std::size_t>(machine.steps);
   Readings out;
+  out.value.assign(static_cast<std::size_t>(machine.parts()), std::vector<double>(steps, kNoReading));
+  out.note.assign(channels.size(), std::vector<Note>(steps, Note::kNone));
   Random random(seed * 7919 + 17);
-  std::array<Memory, kChannels> memory;
-  for (int i = 0; i < kSteps; ++i) {
-    for (int j = 0; j < kChannels; ++j) {
-      const auto u = static_cast<std::size_t>(j);
-      const double noise = kSd[u] * random.normal();
-      const double x = truth.of(j, i);
-      const Fault* f = fault_at(row, j, i);
+  std::vector<Memory> memory(out.value.size());
+  for (int i = 0; i < machine.steps; ++i) {
+    const auto step = static_cast<std::size_t>(i);
+    const double t_s = i * machine.step_s;
+    for (std::size_t j = 0; j < channels.size(); ++j) {
+      const Channel& c = channels[j];
+      if (!measures(machine, c, i)) continue;
+      Sensor sensor(machine, c, random);
+      const Fault* f = fault_at(row, static_cast<int>(j), t_s);
+      const double late_s = c.time_jitter_s > 0.0 ? c.time_jitter_s * random.normal() : 0.0;
       bool wild = false;
-      // A first-order lag (instrument damping) starts from the true value.
-      if (f && f->kind == Kind::kLag)
-        memory[u].lagged += (x - memory[u].lagged) * (1.0 - std::exp(-kStepS / f->size));
-      else
-        memory[u].lagged = x;
-      double y = f ? faulty(*f, x, noise, i * kStepS, memory[u], random, wild) : x + noise;
-      if (!f) memory[u].held = y;
-      if (!std::isnan(y)) y = std::clamp(round_to(y, kResolution), -kRange[u], kRange[u]);
-      if (!row.present[u]) y = kNoReading;
-      out.value[u].push_back(y);
-      out.wild[u].push_back(wild);
+      Note note = Note::kNone;
+      for (int p = 0; p < c.parts; ++p) {
+        const int part = machine.first_part(static_cast<int>(j)) + p;
+        Memory& past = memory[static_cast<std::size_t>(part)];
+        double y = sensor.part(f, machine.shows(part, truth.state[step]),
+                               moved(machine, truth, part, i, late_s), t_s, past, wild);
+        note = report(c, past, y);
+        if (row.has(static_cast<int>(j))) out.value[static_cast<std::size_t>(part)][step] = y;
+      }
+      if (row.has(static_cast<int>(j))) out.note[j][step] = wild ? Note::kWild : note;
     }
   }
   return out;
