@@ -23,11 +23,14 @@ void AxisFilter::predict() {
   pvv_ += q * dt;
 }
 
-double AxisFilter::update(int channel, double y) {
+double AxisFilter::update(int channel, double y, double strays) {
   const bool speed = channel == 3;
   const double sd = Axis::kSd[static_cast<std::size_t>(channel)];
   const double s = (speed ? pvv_ : pxx_) + sd * sd;
   const double e = y - (speed ? v_ : x_);
+  const double regular = (1.0 - strays) * std::exp(-0.5 * e * e / s) / std::sqrt(2.0 * std::numbers::pi * s);
+  const double stray = strays / (2.0 * Axis::kRange[static_cast<std::size_t>(channel)]);
+  if (stray > regular) return std::log(stray + regular);
   const double hx = speed ? pxv_ : pxx_;
   const double hv = speed ? pvv_ : pxv_;
   const double pxx = pxx_ - hx * hx / s;
@@ -37,7 +40,7 @@ double AxisFilter::update(int channel, double y) {
   pxv_ = pxv;
   x_ += hx / s * e;
   v_ += hv / s * e;
-  return -0.5 * (std::log(2.0 * std::numbers::pi * s) + e * e / s);
+  return stray > 0.0 ? std::log(stray + regular) : -0.5 * (std::log(2.0 * std::numbers::pi * s) + e * e / s);
 }
 
 }  // namespace steelyard::judges

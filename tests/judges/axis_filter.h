@@ -7,8 +7,9 @@ namespace steelyard::judges {
 class AxisFilter {
  public:
   void predict();
-  /// Takes a reading of the channel; returns its log density before.
-  double update(int channel, double y);
+  /// Takes a reading of the channel; returns its log density before. `strays`: the share of readings that are
+  /// uniform over the range; one that is likelier a stray moves nothing.
+  double update(int channel, double y, double strays);
 
  private:
   double x_ = 0.0;
