@@ -1,9 +1,8 @@
 // SPDX-License-Identifier: Apache-2.0
 // Is the engine honest about a machine that is exactly as it assumes? Everything is drawn from its own
-// generative model (prior.h); then coverage of each state and the truth of stated probabilities are counted
-// at moments 0.5 R apart.
-//   prior_calibration [--runs N] [--seed S] [--length_s L] [--forget 1] [--hypotheses K] [--parents P]
-//   [--known 1]
+// generative model (prior.h). The truth of stated probabilities is counted at every moment, for doubt is short;
+// coverage of states and intervals at moments 0.5 R apart.
+//   prior_calibration [--runs N] [--seed S] [--length_s L] [--forget 1] [--hypotheses K] [--parents P] [--known 1]
 // forget 0 switches the forgetting of noise off: precisions are constant here, so that is the exact prior.
 // A coverage is broken where it is beyond its bound by more than two standard errors. A bin counts where its
 // standard error over runs is at most 0.02; then it must be within 0.05.
@@ -40,14 +39,16 @@ struct Tally {
   std::vector<Reliability> stated;
   std::array<Rate, engine::kConditions> noise;   ///< 90 % interval of noise_sd, by true condition
   std::array<Rate, engine::kConditions> offset;  ///< 90 % interval of the offset, by true condition
-  double squared_error = 0.0;
-  double stated_variance = 0.0;
+  std::vector<Rate> noise_by_channel;            ///< of sound channels, and on which side the interval missed
+  std::vector<Rate> noise_above;
 
-  Tally() {
+  explicit Tally(std::size_t channels) : noise_by_channel(channels), noise_above(channels) {
     for (const char* name : kConditionNames) stated.push_back({name, {}});
   }
   void end_run() {
     for (auto* group : {&noise, &offset})
+      for (Rate& r : *group) r.end_run();
+    for (auto* group : {&noise_by_channel, &noise_above})
       for (Rate& r : *group) r.end_run();
     for (Rate& r : covered95) r.end_run();
     for (Rate& r : covered90) r.end_run();
@@ -56,14 +57,25 @@ struct Tally {
   }
 };
 
-void look_at_channel(const engine::ChannelEstimate& e, const ChannelTruth& truth, Tally& tally) {
-  for (std::size_t k = 0; k < engine::kConditions; ++k)
-    tally.stated[k].add(e.probability[k], truth.condition == static_cast<Condition>(k));
+void look_at_conditions(const engine::Estimate& e, const PriorMachine& machine, Tally& tally) {
+  for (std::size_t j = 0; j < e.channels.size(); ++j)
+    for (std::size_t k = 0; k < engine::kConditions; ++k)
+      tally.stated[k].add(e.channels[j].probability[k],
+                          machine.channel(static_cast<int>(j)).condition == static_cast<Condition>(k));
+}
+
+void look_at_channel(std::size_t j, const engine::ChannelEstimate& e, const ChannelTruth& truth,
+                     Tally& tally) {
   const auto c = static_cast<std::size_t>(truth.condition);
   // Intervals of what a channel in the condition has are only meant where the engine believes in it.
   if (e.probability[c] < 0.5) return;
   if (truth.condition != Condition::kFrozen)
     tally.noise[c].add(e.noise_sd90.lo <= truth.noise_sd && truth.noise_sd <= e.noise_sd90.hi, 0.90);
+  if (truth.condition == Condition::kSound) {
+    tally.noise_by_channel[j].add(e.noise_sd90.lo <= truth.noise_sd && truth.noise_sd <= e.noise_sd90.hi,
+                                  0.90);
+    tally.noise_above[j].add(truth.noise_sd > e.noise_sd90.hi, 0.05);
+  }
   const bool walks = truth.condition != Condition::kSound && truth.condition != Condition::kStuck &&
                      truth.condition != Condition::kFrozen;
   if (walks) tally.offset[c].add(std::fabs(e.offset - truth.own) < kTwoSided90 * e.offset_sd, 0.90);
@@ -79,7 +91,7 @@ void look(const engine::Estimate& e, const PriorMachine& machine, Tally& tally) 
   for (std::size_t m = 0; m < 3; ++m)
     tally.modes[m].add(machine.mode() == static_cast<engine::Mode>(m), e.mode[m]);
   for (std::size_t j = 0; j < e.channels.size(); ++j)
-    look_at_channel(e.channels[j], machine.channel(static_cast<int>(j)), tally);
+    look_at_channel(j, e.channels[j], machine.channel(static_cast<int>(j)), tally);
 }
 
 void run(const std::shared_ptr<const engine::Model>& model, std::uint64_t seed, int steps, Tally& tally) {
@@ -91,9 +103,11 @@ void run(const std::shared_ptr<const engine::Model>& model, std::uint64_t seed, 
     const engine::TimeNs t = kBegin + i * static_cast<engine::TimeNs>(kStepS * 1e9);
     for (int j = 0; j < static_cast<int>(model->channels.size()); ++j)
       engine.read(t, j, machine.channel(j).shown, engine::Quality::kGood);
-    if (i < kFirst || i % kEvery != 0) continue;
-    engine.estimate(t, engine::Detail::kFull, e);
-    look(e, machine, tally);
+    if (i < kFirst) continue;
+    const bool full = i % kEvery == 0;
+    engine.estimate(t, full ? engine::Detail::kFull : engine::Detail::kBrief, e);
+    look_at_conditions(e, machine, tally);
+    if (full) look(e, machine, tally);
   }
   tally.end_run();
 }
@@ -133,6 +147,11 @@ void judge(const engine::Model& model, const Tally& tally, Bounds& bounds) {
     judge_coverage(std::string("90 % of noise, ") + kConditionNames[k], tally.noise[k], 0.85, 0.95, bounds);
     judge_coverage(std::string("90 % of offset, ") + kConditionNames[k], tally.offset[k], 0.85, 0.95, bounds);
   }
+  for (std::size_t j = 0; j < tally.noise_by_channel.size(); ++j)
+    std::printf("  noise of sound %s: %.4f within (se %.4f), %.4f above, %.4f below\n",
+                model.channels[j].name.c_str(), tally.noise_by_channel[j].observed(),
+                tally.noise_by_channel[j].standard_error(), tally.noise_above[j].observed(),
+                1.0 - tally.noise_by_channel[j].observed() - tally.noise_above[j].observed());
   for (const auto& r : tally.stated) judge_reliability(r, bounds);
   constexpr std::array<const char*, 3> kModeNames{"still", "usual", "jolted"};
   for (std::size_t m = 0; m < 3; ++m)
@@ -159,7 +178,7 @@ int main(int argc, char** argv) {
   model->options.parents = options.whole("parents");
   std::printf("seed %d, %d runs of %g s, forgetting %s\n", options.whole("seed"), options.whole("runs"),
               options["length_s"], model->options.forget ? "on" : "off");
-  Tally tally;
+  Tally tally(model->channels.size());
   const int steps = static_cast<int>(options["length_s"] / kStepS);
   for (int i = 0; i < options.whole("runs"); ++i)
     run(model, static_cast<std::uint64_t>(options.whole("seed")) * 1'000'003U + static_cast<std::uint64_t>(i),
