@@ -1,8 +1,9 @@
 // SPDX-License-Identifier: Apache-2.0
 // Is the engine honest about a machine that is exactly as it assumes? Everything is drawn from its own
-// generative model (prior.h). The truth of stated probabilities is counted at every moment, for doubt is short;
-// coverage of states and intervals at moments 0.5 R apart.
-//   prior_calibration [--runs N] [--seed S] [--length_s L] [--forget 1] [--hypotheses K] [--parents P] [--known 1]
+// generative model (prior.h). The truth of stated probabilities is counted at every moment, for doubt is
+// short; coverage of states and intervals at moments 0.5 R apart.
+//   prior_calibration [--runs N] [--seed S] [--length_s L] [--forget 1] [--hypotheses K] [--parents P]
+//   [--known 1]
 // forget 0 switches the forgetting of noise off: precisions are constant here, so that is the exact prior.
 // A coverage is broken where it is beyond its bound by more than two standard errors. A bin counts where its
 // standard error over runs is at most 0.02; then it must be within 0.05.
