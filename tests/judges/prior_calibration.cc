@@ -44,7 +44,7 @@ struct Tally {
   std::vector<Rate> noise_above;
 
   explicit Tally(std::size_t channels) : noise_by_channel(channels), noise_above(channels) {
-    for (const char* name : kConditionNames) stated.push_back({name, {}});
+    for (const char* name : kConditionNames) stated.push_back({name, {}, {}});
   }
   void end_run() {
     for (auto* group : {&noise, &offset})
@@ -123,20 +123,25 @@ void judge_coverage(const std::string& what, const Rate& rate, double lo, double
                  format("%s: %.4f; must be from %.2f to %.2f", what.c_str(), rate.observed(), lo, hi));
 }
 
+void judge_bin(const std::string& of, const char* range, const Rate& bin, Bounds& bounds) {
+  if (bin.cases() == 0) return;
+  const double off = bin.observed() - bin.expected();
+  const bool enough = bin.standard_error() <= kEnough;
+  std::printf("  %-8s %8ld cases %6ld runs  stated %.4f  came true %.4f  off %+.4f (se %.4f)%s\n", range,
+              bin.cases(), bin.runs(), bin.expected(), bin.observed(), off, bin.standard_error(),
+              enough ? "" : "  few");
+  bounds.require(
+      !enough || std::fabs(off) <= kBinWithin,
+      format("P(%s), %s: stated %.3f, came true %.3f", of.c_str(), range, bin.expected(), bin.observed()));
+}
+
 void judge_reliability(const Reliability& r, Bounds& bounds) {
   std::printf("P(%s)\n", r.name.c_str());
-  for (std::size_t b = 0; b < r.bins.size(); ++b) {
-    const Rate& bin = r.bins[b];
-    if (bin.cases() == 0) continue;
-    const double off = bin.observed() - bin.expected();
-    const bool enough = bin.standard_error() <= kEnough;
-    const bool wrong = enough && std::fabs(off) > kBinWithin;
-    std::printf("  %.1f-%.1f %8ld cases %6ld runs  stated %.4f  came true %.4f  off %+.4f (se %.4f)%s\n",
-                0.1 * static_cast<double>(b), 0.1 * static_cast<double>(b + 1), bin.cases(), bin.runs(),
-                bin.expected(), bin.observed(), off, bin.standard_error(), enough ? "" : "  few");
-    bounds.require(!wrong, format("P(%s), bin %.1f: stated %.3f, came true %.3f", r.name.c_str(),
-                                  0.1 * static_cast<double>(b), bin.expected(), bin.observed()));
-  }
+  for (std::size_t b = 0; b < r.bins.size(); ++b)
+    judge_bin(r.name,
+              format("%.1f-%.1f", 0.1 * static_cast<double>(b), 0.1 * static_cast<double>(b + 1)).c_str(),
+              r.bins[b], bounds);
+  judge_bin(r.name, "doubt", r.doubt, bounds);
 }
 
 void judge(const engine::Model& model, const Tally& tally, Bounds& bounds) {

@@ -20,10 +20,12 @@ double Rate::standard_error() const {
 void Reliability::add(double stated, bool came_true) {
   const auto bin = static_cast<std::size_t>(std::clamp(stated * 10.0, 0.0, 9.0));
   bins[bin].add(came_true ? 1.0 : 0.0, stated);
+  if (bin > 0 && bin < 9) doubt.add(came_true ? 1.0 : 0.0, stated);
 }
 
 void Reliability::end_run() {
   for (Rate& bin : bins) bin.end_run();
+  doubt.end_run();
 }
 
 }  // namespace steelyard::judges

@@ -39,6 +39,7 @@ class Rate {
 struct Reliability {
   std::string name;
   std::array<Rate, 10> bins;
+  Rate doubt;  ///< all that is stated from 0.1 to 0.9 together
 
   void add(double stated, bool came_true);
   void end_run();
