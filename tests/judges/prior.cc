@@ -15,6 +15,7 @@ using engine::Mode;
 constexpr std::array<double, engine::kConditions> kWalk{0.0, 0.02, 3.5, 30.0, 0.05, 0.0};
 constexpr double kFirstRate = 1.0;
 constexpr double kRateWalk = 0.1;
+constexpr double kWalkShape = 1.0;  // of the Gamma of a walk's precision, mean 1
 constexpr double kFrozenRepeats = 0.98;
 
 constexpr std::array<double, 4> kSd{0.01, 0.03, 0.05, 0.05};
@@ -27,6 +28,8 @@ constexpr double kFailsEveryResponses = 200.0;
 bool is_walk(Condition c) {
   return c == Condition::kCreeping || c == Condition::kOffset || c == Condition::kWandering;
 }
+
+bool learns_speed(Condition c) { return c == Condition::kOffset || c == Condition::kWandering; }
 
 }  // namespace
 
@@ -47,6 +50,7 @@ std::shared_ptr<engine::Model> prior_model() {
     model->channels.push_back(std::move(c));
   }
   engine::set_defaults(*model, 1.0);
+  model->freeze_share = 0.0;
   for (std::size_t j = 0; j < kSd.size(); ++j) {
     model->channels[j].offset_size = j == 3 ? kOffsetSizeSpeed : kOffsetSizePosition;
     model->channels[j].fails_every_s = kFailsEveryResponses * model->response_s;
@@ -135,6 +139,7 @@ void PriorMachine::begin(int j, Condition next) {
   const Condition from = channel.condition;
   channel.condition = next;
   if (is_walk(next) && !is_walk(from)) channel.own = c.offset_size * random_.normal();
+  channel.haste = learns_speed(next) ? random_.gamma(kWalkShape) / kWalkShape : 1.0;
   if (next == Condition::kCreeping)
     channel.rate = kFirstRate * spec_sd(j) / model_.response_s * random_.normal();
   if (next == Condition::kStuck) channel.own = random_.between(c.lo, c.hi);
@@ -152,7 +157,8 @@ void PriorMachine::walk(int j, double dt_s) {
     channel.own += dt_s * channel.rate + density * dt_s * std::sqrt(dt_s) * (0.5 * n1 + n2 / std::sqrt(12.0));
     channel.rate += density * std::sqrt(dt_s) * n1;
   }
-  const double step = kWalk[static_cast<std::size_t>(channel.condition)] * sd * std::sqrt(dt_s / response);
+  const double step =
+      kWalk[static_cast<std::size_t>(channel.condition)] * sd * std::sqrt(dt_s / response / channel.haste);
   channel.own += step * random_.normal();
 }
 

@@ -24,6 +24,7 @@ struct ChannelTruth {
   double noise_sd = 0.0;  ///< resolution included
   double own = 0.0;       ///< offset of the walks, level of stuck
   double rate = 0.0;      ///< of a creeping offset, per s
+  double haste = 1.0;     ///< precision of an offset's walk, relative to that of its condition's speed
   double shown = 0.0;     ///< last reading
 };
 
