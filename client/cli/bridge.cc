@@ -36,6 +36,13 @@ engine::ChannelEstimate channel_of(const v1::ChannelEstimate& wire) {
   channel.influence = wire.influence();
   channel.age_s = wire.age_s();
   channel.out_of_range = wire.out_of_range();
+  channel.unsound_since_ns = wire.since_ns();
+  // Never more than a channel can have.
+  for (int i = 0; i < wire.others_size() && i < engine::kMaxParts - 1; ++i) {
+    const v1::PartEstimate& part = wire.others(i);
+    channel.others.push_back(
+        {part.noise_sd(), interval_of(part.noise_sd90()), part.offset(), part.offset_sd()});
+  }
   return channel;
 }
 

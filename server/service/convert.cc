@@ -46,6 +46,19 @@ void add_inputs(const Picture& picture, v1::Moment& message) {
   }
 }
 
+void add_parts(const engine::ChannelEstimate& from, const engine::ChannelModel& model,
+               v1::ChannelEstimate& to) {
+  for (std::size_t i = 0; i < from.others.size(); ++i) {
+    const engine::PartEstimate& part = from.others[i];
+    v1::PartEstimate& other = *to.add_others();
+    other.set_unit(model.part(static_cast<int>(i) + 1).unit);
+    other.set_noise_sd(part.noise_sd);
+    set_interval(part.noise_sd90, *other.mutable_noise_sd90());
+    other.set_offset(part.offset);
+    other.set_offset_sd(part.offset_sd);
+  }
+}
+
 void fill_channel(const engine::ChannelEstimate& from, v1::ChannelEstimate& to) {
   to.set_trust(from.trust);
   for (const double probability : from.probability) to.add_probability(probability);
@@ -67,6 +80,7 @@ void add_channels(const Picture& picture, v1::Moment& message) {
     to.set_name(model.channels[i].name);
     to.set_unit(model.channels[i].unit);
     fill_channel(picture.estimate.channels[i], to);
+    add_parts(picture.estimate.channels[i], model.channels[i], to);
     to.set_words(timeline::channel_words(*picture.rig, static_cast<int>(i), picture.estimate));
   }
 }
@@ -83,6 +97,10 @@ void add_explanations(const Picture& picture, v1::Moment& message) {
       part.set_condition(static_cast<v1::Condition>(finding.condition));
       part.set_offset(finding.offset);
       part.set_offset_sd(finding.offset_sd);
+      part.set_since_ns(finding.since_ns);
+      if (model.channels[static_cast<std::size_t>(finding.channel)].parts() > 1) {
+        part.set_part(static_cast<std::uint32_t>(finding.part) + 1);
+      }
     }
   }
 }

@@ -14,14 +14,15 @@
 #include "engine/engine.h"
 #include "rig/rig.h"
 #include "timeline/sequence_set.h"
+#include "timeline/values.h"
 
 namespace steelyard::timeline {
 
-/// One value from one source. `source` is a number from Timeline::source_number().
+/// What one source read at one time. `source` is a number from Timeline::source_number().
 struct Reading {
   engine::TimeNs time_ns = 0;
   rig::Signal signal;
-  double value = 0.0;
+  Values values;  ///< one for each part of the channel; an input has one
   engine::Quality quality = engine::Quality::kGood;
   std::uint32_t source = 0;
   std::uint64_t sequence = 0;  ///< rises within a source
@@ -33,10 +34,11 @@ enum class Outcome : std::uint8_t {
   kSameMeasurement,
   kOutOfRange,
   kNotUsable,
-  kInput,      ///< taken as an input's value
-  kDuplicate,  ///< (source, sequence) was taken before; quietly ignored
-  kNotFinite,  ///< refused
-  kTooOld,     ///< refused: older than what has been fused (until the timeline can rewind)
+  kInput,       ///< taken as an input's value
+  kDuplicate,   ///< (source, sequence) was taken before; quietly ignored
+  kNotFinite,   ///< refused
+  kTooOld,      ///< refused: older than what has been fused (until the timeline can rewind)
+  kWrongParts,  ///< refused: not one value for each part of the channel
 };
 
 class Timeline {
@@ -76,6 +78,7 @@ class Timeline {
   };
   [[nodiscard]] bool before(const Item& a, const Item& b) const;
   [[nodiscard]] engine::TimeNs moment_of(const Reading& reading) const;
+  [[nodiscard]] std::size_t parts_of(const rig::Signal& signal) const;
   Outcome take(const Item& item);
   Outcome take_channel(const Item& item);
 
