@@ -2,8 +2,6 @@
 // Field by field from the engine's estimate to the wire.
 #include "service/convert.h"
 
-#include <spdlog/fmt/fmt.h>
-
 #include <algorithm>
 #include <cmath>
 
@@ -81,7 +79,9 @@ void add_channels(const Picture& picture, v1::Moment& message) {
     to.set_unit(model.channels[i].unit);
     fill_channel(picture.estimate.channels[i], to);
     add_parts(picture.estimate.channels[i], model.channels[i], to);
-    to.set_words(timeline::channel_words(*picture.rig, static_cast<int>(i), picture.estimate));
+    const engine::TimeNs since_ns = i < picture.since_ns.size() ? picture.since_ns[i] : 0;
+    to.set_since_ns(timeline::since_of(picture.estimate.channels[i], picture.estimate, since_ns));
+    to.set_words(timeline::channel_words(*picture.rig, static_cast<int>(i), picture.estimate, since_ns));
   }
 }
 
@@ -90,7 +90,7 @@ void add_explanations(const Picture& picture, v1::Moment& message) {
   for (const engine::Explanation& from : picture.estimate.explanations) {
     v1::Explanation& to = *message.add_explanations();
     to.set_probability(from.probability);
-    to.set_words(explanation_words(*picture.rig, from));
+    to.set_words(timeline::explanation_words(*picture.rig, from, picture.estimate.time_ns));
     for (const engine::Finding& finding : from.findings) {
       v1::Finding& part = *to.add_findings();
       part.set_channel(model.channels[static_cast<std::size_t>(finding.channel)].name);
@@ -105,37 +105,7 @@ void add_explanations(const Picture& picture, v1::Moment& message) {
   }
 }
 
-std::string finding_words(const rig::Rig& rig, const engine::Finding& finding) {
-  const auto& channel = rig.model->channels[static_cast<std::size_t>(finding.channel)];
-  const std::string size = timeline::rounded(finding.offset, finding.offset_sd);
-  const std::string sd = timeline::rounded(finding.offset_sd, finding.offset_sd);
-  const char* condition = timeline::condition_name(finding.condition);
-  switch (finding.condition) {
-    case engine::Condition::kSound:
-    case engine::Condition::kFrozen:
-      return fmt::format("{} {}", channel.name, condition);
-    case engine::Condition::kStuck:
-      return fmt::format("{} {} at {} {}", channel.name, condition, size, channel.unit);
-    case engine::Condition::kCreeping:
-    case engine::Condition::kOffset:
-    case engine::Condition::kWandering:
-      break;
-  }
-  return fmt::format("{} {} by {}{} ± {} {}", channel.name, condition, finding.offset > 0 ? "+" : "", size,
-                     sd, channel.unit);
-}
-
 }  // namespace
-
-std::string explanation_words(const rig::Rig& rig, const engine::Explanation& explanation) {
-  if (explanation.findings.empty()) return "all channels are sound";
-  std::string words;
-  for (const engine::Finding& finding : explanation.findings) {
-    if (!words.empty()) words += "; ";
-    words += finding_words(rig, finding);
-  }
-  return words;
-}
 
 v1::EstimateQuality quality_of(const Picture& picture) {
   if (!picture.started || picture.at_horizon) return v1::ESTIMATE_BAD;

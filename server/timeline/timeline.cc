@@ -45,7 +45,10 @@ bool failure_signal(const engine::ChannelModel& channel, double value) {
 }  // namespace
 
 Timeline::Timeline(std::shared_ptr<const rig::Rig> rig)
-    : rig_(std::move(rig)), engine_(rig_->model), rank_(name_ranks(*rig_->model)) {}
+    : rig_(std::move(rig)),
+      engine_(rig_->model),
+      rank_(name_ranks(*rig_->model)),
+      last_sources_(rig_->model->channels.size(), -1) {}
 
 std::uint32_t Timeline::source_number(std::string_view name) {
   for (std::size_t i = 0; i < sources_.size(); ++i)
@@ -133,6 +136,7 @@ Outcome Timeline::take_channel(const Item& item) {
   const Quality quality = failure_signal(channel, r.values.first()) ? Quality::kBad : r.quality;
   // Who sent it tells the engine which channels can freeze together.
   const auto source = static_cast<int>(r.source);
+  last_sources_[static_cast<std::size_t>(r.signal.index)] = source;
   switch (engine_.read(item.moment_ns, r.signal.index, r.values.all(), quality, source)) {
     case engine::Fate::kFused:
       return Outcome::kFused;

@@ -64,6 +64,8 @@ class Timeline {
   [[nodiscard]] engine::TimeNs clock() const;
   [[nodiscard]] bool started() const;
   [[nodiscard]] const rig::Rig& rig() const;
+  /// By channel, the source of its last reading that was taken; −1: none yet.
+  [[nodiscard]] std::span<const int> last_sources() const { return last_sources_; }
   [[nodiscard]] const engine::Engine& engine() const;
 
  private:
@@ -86,6 +88,7 @@ class Timeline {
   engine::Engine engine_;
   std::vector<int> rank_;  ///< of each channel's name in bytewise order
   std::vector<Source> sources_;
+  std::vector<int> last_sources_;
   std::vector<Item> items_;  ///< scratch of run()
   bool started_ = false;
   engine::TimeNs clock_ns_ = 0;
