@@ -67,14 +67,16 @@ void BatchMaker::add(const timeline::Reading& reading) {
   }
   batch_.add_time_step_ns(reading.time_ns - last_ns_);
   batch_.add_channel(number_of(reading.signal));
-  batch_.add_value(reading.value);
+  batch_.add_value(reading.values.first());
+  for (const double more : reading.values.all().subspan(1)) batch_.add_more_values(more);
   last_ns_ = reading.time_ns;
 }
 
 bool BatchMaker::full_before(const timeline::Reading& reading, bool one_time_each) const {
   if (rows() == 0) return false;
   const bool new_time = reading.time_ns != last_ns_;
-  return rows() >= kMostRows || (new_time && (one_time_each || rows() >= kUsualRows));
+  if (rows() >= kMostRows || values() + reading.values.size() > kMostValues) return true;
+  return new_time && (one_time_each || rows() >= kUsualRows);
 }
 
 v1::Batch BatchMaker::take() { return std::exchange(batch_, {}); }

@@ -28,6 +28,8 @@ class BatchMaker {
   /// The service takes no more in one batch.
   static constexpr std::size_t kMostRows = 65536;
   static constexpr std::size_t kUsualRows = 1024;
+  /// Values of one batch, so that it stays below gRPC's 4 MiB.
+  static constexpr std::size_t kMostValues = 131072;
 
   /// `inputs` of the rig: what stands before the channels in the table.
   explicit BatchMaker(std::size_t inputs) : inputs_(inputs) {}
@@ -38,6 +40,9 @@ class BatchMaker {
   /// hold no more.
   [[nodiscard]] bool full_before(const timeline::Reading& reading, bool one_time_each) const;
   [[nodiscard]] std::size_t rows() const { return static_cast<std::size_t>(batch_.value_size()); }
+  [[nodiscard]] std::size_t values() const {
+    return rows() + static_cast<std::size_t>(batch_.more_values_size());
+  }
   [[nodiscard]] engine::TimeNs last_ns() const { return last_ns_; }
   [[nodiscard]] v1::Batch take();
 

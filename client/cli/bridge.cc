@@ -36,7 +36,28 @@ engine::ChannelEstimate channel_of(const v1::ChannelEstimate& wire) {
   channel.influence = wire.influence();
   channel.age_s = wire.age_s();
   channel.out_of_range = wire.out_of_range();
+  channel.unsound_since_ns = wire.since_ns();
+  // Never more than a channel can have.
+  for (int i = 0; i < wire.others_size() && i < engine::kMaxParts - 1; ++i) {
+    const v1::PartEstimate& part = wire.others(i);
+    channel.others.push_back(
+        {part.noise_sd(), interval_of(part.noise_sd90()), part.offset(), part.offset_sd()});
+  }
   return channel;
+}
+
+engine::Explanation explanation_of(const v1::Explanation& wire, const std::vector<std::string>& names) {
+  engine::Explanation out;
+  out.probability = wire.probability();
+  for (const v1::Finding& one : wire.findings()) {
+    const auto name = std::find(names.begin(), names.end(), one.channel());
+    if (name == names.end()) continue;
+    const auto channel = static_cast<int>(name - names.begin());
+    const int part = one.part() > 0 && one.part() <= engine::kMaxParts ? static_cast<int>(one.part()) - 1 : 0;
+    out.findings.push_back({channel, static_cast<engine::Condition>(one.condition()), one.offset(),
+                            one.offset_sd(), part, one.since_ns()});
+  }
+  return out;
 }
 
 std::string quality_of(v1::EstimateQuality quality) {
@@ -68,9 +89,14 @@ Picture picture_of(const v1::Moment& moment) {
   }
   for (const v1::ChannelEstimate& channel : moment.channels()) {
     picture.names.channels.push_back(channel.name());
-    picture.channel_units.push_back(channel.unit());
+    picture.names.units.push_back(channel.unit());
     picture.words.push_back(channel.words());
     picture.estimate.channels.push_back(channel_of(channel));
+  }
+  // The service lists at most three.
+  for (int i = 0; i < std::min(moment.explanations_size(), 3); ++i) {
+    picture.estimate.explanations.push_back(explanation_of(moment.explanations(i), picture.names.channels));
+    picture.explanations.push_back(moment.explanations(i).words());
   }
   return picture;
 }

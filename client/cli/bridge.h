@@ -20,13 +20,13 @@ namespace steelyard::client {
 struct Picture {
   Names names;
   std::vector<std::string> state_units;
-  std::vector<std::string> channel_units;
-  std::vector<std::string> words;  ///< by channel
-  std::string quality;             ///< of the estimate: "good", "uncertain", "bad"
-  engine::TimeNs clock_ns = 0;     ///< newest accepted reading
+  std::vector<std::string> words;         ///< by channel
+  std::vector<std::string> explanations;  ///< those of the estimate, in words
+  std::string quality;                    ///< of the estimate: "good", "uncertain", "bad"
+  engine::TimeNs clock_ns = 0;            ///< newest accepted reading
   double behind_s = 0.0;
   bool started = false;
-  engine::Estimate estimate;  ///< without inputs and explanations
+  engine::Estimate estimate;  ///< without inputs
 };
 
 [[nodiscard]] Picture picture_of(const v1::Moment& moment);

@@ -5,7 +5,7 @@
 #include <algorithm>
 #include <initializer_list>
 
-#include "timeline/words.h"
+#include "timeline/kinds.h"
 
 namespace steelyard::client {
 namespace {
@@ -15,6 +15,20 @@ void append_cells(std::string& out, std::initializer_list<double> values) {
     out += ',';
     append_number(out, value);
   }
+}
+
+// All behind time and channel.
+void append_part_row(std::string& out, const engine::ChannelEstimate& channel,
+                     const engine::PartEstimate& part) {
+  append_cells(out, {channel.trust});
+  for (const double probability : channel.probability) append_cells(out, {probability});
+  append_cells(out, {channel.silent, part.noise_sd, part.noise_sd90.lo, part.noise_sd90.hi, part.offset,
+                     part.offset_sd, channel.influence});
+  out += ',';
+  if (channel.age_s >= 0.0) append_number(out, channel.age_s);  // empty: no reading yet
+  out += ",";
+  out += timeline::ne107_status(channel);
+  out += '\n';
 }
 
 }  // namespace
@@ -46,16 +60,12 @@ void append_channel_rows(std::string& out, const Names& names, const engine::Est
   const std::size_t count = std::min(names.channels.size(), estimate.channels.size());
   for (std::size_t i = 0; i < count; ++i) {
     const engine::ChannelEstimate& channel = estimate.channels[i];
-    out += time + "," + names.channels[i];
-    append_cells(out, {channel.trust});
-    for (const double probability : channel.probability) append_cells(out, {probability});
-    append_cells(out, {channel.silent, channel.noise_sd, channel.noise_sd90.lo, channel.noise_sd90.hi,
-                       channel.offset, channel.offset_sd, channel.influence});
-    out += ',';
-    if (channel.age_s >= 0.0) append_number(out, channel.age_s);  // empty: no reading yet
-    out += ",";
-    out += timeline::ne107_status(channel);
-    out += '\n';
+    const engine::PartEstimate first{channel.noise_sd, channel.noise_sd90, channel.offset, channel.offset_sd};
+    for (std::size_t part = 0; part <= channel.others.size(); ++part) {
+      out += time + "," + names.channels[i];
+      if (!channel.others.empty()) out += "." + std::to_string(part + 1);
+      append_part_row(out, channel, part == 0 ? first : channel.others[part - 1]);
+    }
   }
 }
 

@@ -13,6 +13,7 @@ namespace steelyard::client {
 struct Names {
   std::vector<std::string> states;
   std::vector<std::string> channels;
+  std::vector<std::string> units;  ///< of the channels
   bool operator==(const Names&) const = default;
 };
 
@@ -20,7 +21,8 @@ struct Names {
 void append_estimate_header(std::string& out, const Names& names);
 void append_estimate_row(std::string& out, const engine::Estimate& estimate, TimeStyle style);
 
-/// time,channel,trust,p.sound,…: one row a channel.
+/// time,channel,trust,p.sound,…: one row a channel; of a vector channel one a part, named <channel>.1 and so
+/// on, which share all but noise and offset.
 void append_channel_header(std::string& out);
 void append_channel_rows(std::string& out, const Names& names, const engine::Estimate& estimate,
                          TimeStyle style);

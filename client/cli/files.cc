@@ -68,7 +68,12 @@ bool open_log(const std::string& path, LogFile& log) {
 }
 
 LogReader::Find names_of(std::shared_ptr<const rig::Rig> rig) {
-  return [rig = std::move(rig)](std::string_view name) { return rig->find(name); };
+  return [rig = std::move(rig)](std::string_view name) -> std::optional<Named> {
+    const std::optional<rig::Signal> signal = rig->find(name);
+    if (!signal) return std::nullopt;
+    if (signal->is_input) return Named{*signal, 1};
+    return Named{*signal, rig->model->channels[static_cast<std::size_t>(signal->index)].parts()};
+  };
 }
 
 const std::string& signal_name(const rig::Rig& rig, const rig::Signal& signal) {

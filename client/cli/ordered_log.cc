@@ -34,13 +34,14 @@ void OrderedLog::wrong(const rig::Problem& problem) {
 bool OrderedLog::next(std::vector<timeline::Reading>& ready) {
   constexpr std::uint64_t kRowsPerStep = 256;
   ready.clear();
-  while (!at_end_ && ready.empty()) {
+  for (bool more = true; more && ready.empty();) {
     for (std::uint64_t rows = 0; rows < kRowsPerStep && !at_end_; ++rows) {
       if (interrupted()) return false;
       at_end_ = !reader_.next(row_);
       if (!at_end_) add(row_);
     }
     progress_.show(reader_.bytes_read());
+    more = !at_end_;
     if (at_end_) {
       reorder_.release_rest(ready);
     } else {

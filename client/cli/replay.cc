@@ -9,11 +9,13 @@
 
 #include "cli/columns.h"
 #include "cli/commands.h"
+#include "cli/episode_rows.h"
 #include "cli/files.h"
 #include "cli/ordered_log.h"
 #include "cli/output.h"
 #include "cli/signals.h"
-#include "lib/log/stretches.h"
+#include "timeline/episodes.h"
+#include "timeline/stretches.h"
 #include "timeline/timeline.h"
 #include "timeline/words.h"
 
@@ -31,13 +33,16 @@ struct Options {
   TimeStyle time = TimeStyle::kSeconds;
   bool settled = false;  // not yet there
   std::string report;    // not yet there
-  std::string episodes;  // not yet there
+  std::string episodes;
 };
 
 Names names_of_model(const engine::Model& model) {
   Names names;
   for (const engine::StateModel& state : model.states) names.states.push_back(state.name);
-  for (const engine::ChannelModel& channel : model.channels) names.channels.push_back(channel.name);
+  for (const engine::ChannelModel& channel : model.channels) {
+    names.channels.push_back(channel.name);
+    names.units.push_back(channel.unit);
+  }
   return names;
 }
 
@@ -50,9 +55,12 @@ class Replay {
         names_(names_of_model(*rig_->model)),
         timeline_(rig_),
         source_(timeline_.source_number(file.name)),
-        stretches_(names_.channels.size(), static_cast<engine::TimeNs>(rig_->response_s * kNsPerS)),
+        join_ns_(static_cast<engine::TimeNs>(rig_->response_s * kNsPerS)),
+        stretches_(names_.channels.size(), join_ns_),
+        calls_(calls()),
         out_(options.out),
         channels_(options.channels),
+        episodes_(options.episodes),
         log_(file, rig_, "replay"),
         out_of_range_(names_.channels.size()) {}
 
@@ -70,9 +78,8 @@ class Replay {
 
  private:
   bool open_outputs() {
-    for (Output* const output : {&out_, &channels_, &words_}) {
-      if (output == &channels_ && !with_channels()) continue;
-      if (output->open()) continue;
+    for (Output* const output : {&out_, &channels_, &episodes_, &words_}) {
+      if (!is_asked_for(output) || output->open()) continue;
       complain(output->error());
       return false;
     }
@@ -87,6 +94,10 @@ class Replay {
   }
 
   [[nodiscard]] bool with_channels() const { return !options_.channels.empty(); }
+  [[nodiscard]] bool with_episodes() const { return !options_.episodes.empty(); }
+  [[nodiscard]] bool is_asked_for(const Output* output) const {
+    return (output != &channels_ || with_channels()) && (output != &episodes_ || with_episodes());
+  }
   [[nodiscard]] bool going() const { return !interrupted() && !out_.failed() && !channels_.failed(); }
 
   void step(std::vector<timeline::Reading>& ready) {
@@ -99,7 +110,8 @@ class Replay {
     if (outcome == timeline::Outcome::kOutOfRange && !reading.signal.is_input) {
       ++out_of_range_[static_cast<std::size_t>(reading.signal.index)];
     }
-    if (outcome == timeline::Outcome::kNotFinite || outcome == timeline::Outcome::kTooOld) {
+    if (outcome == timeline::Outcome::kNotFinite || outcome == timeline::Outcome::kTooOld ||
+        outcome == timeline::Outcome::kWrongParts) {
       log_.refuse({log_.name(), 0, 0, signal_name(*rig_, reading.signal),
                    "reading of " + time_text(reading.time_ns, options_.time) + " could not be taken"});
     }
@@ -117,23 +129,33 @@ class Replay {
       append_channel_rows(text_, names_, estimate_, options_.time);
       channels_.write(text_);
     }
-    if (options_.words) follow();
+    if (!options_.words && !with_episodes()) return;
+    has_full_ = false;
+    stretches_.add(estimate_, calls_);
   }
 
-  void follow() {
-    views_.clear();
-    for (const engine::ChannelEstimate& channel : estimate_.channels) views_.push_back(view_of(channel));
-    stretches_.add(
-        estimate_.time_ns, views_, [this](int channel) { return words(channel); },
-        [this](const Change& change) {
-          tell(time_text(change.time_ns, options_.time) + "  " + change.words);
-        });
+  timeline::Stretches::Calls calls() {
+    timeline::Stretches::Calls calls;
+    calls.full = [this]() -> const engine::Estimate& { return full(); };
+    if (with_episodes()) {
+      calls.rival = [this](int channel) { return timeline::rival_of(*rig_, channel, full()); };
+    }
+    if (!options_.words) return calls;
+    calls.words = [this](int channel) {
+      return timeline::channel_words(*rig_, channel, full(), stretches_.since(channel));
+    };
+    calls.on_change = [this](const timeline::Change& change) {
+      tell(time_text(change.time_ns, options_.time) + "  " + change.words);
+    };
+    return calls;
   }
 
-  /// Words are rare, so that they can have the full estimate.
-  std::string words(int channel) {
-    timeline_.estimate(estimate_.time_ns, engine::Detail::kFull, full_);
-    return timeline::channel_words(*rig_, channel, full_);
+  /// Of the moment at hand. Few moments need it.
+  const engine::Estimate& full() {
+    if (with_channels()) return estimate_;
+    if (!has_full_) timeline_.estimate(estimate_.time_ns, engine::Detail::kFull, full_);
+    has_full_ = true;
+    return full_;
   }
 
   /// Words go where the data does not.
@@ -147,13 +169,29 @@ class Replay {
   }
 
   void summarise() {
-    std::vector<std::string> units;
-    for (const engine::ChannelModel& channel : rig_->model->channels) units.push_back(channel.unit);
-    const std::vector<Stretch> all = stretches_.finish();
-    std::string text = stretches_text(all, stretches_.left_out(), names_.channels, units,
-                                      [this](engine::TimeNs t) { return time_text(t, options_.time); });
+    std::vector<timeline::Stretch> all = stretches_.finish();
+    if (with_episodes()) write_episodes(all);
+    if (!options_.words) return;
+    std::string text =
+        timeline::stretches_text(all, stretches_.left_out(), names_.channels, names_.units,
+                                 [this](engine::TimeNs t) { return time_text(t, options_.time); });
     text.pop_back();  // tell() ends the line
     tell(text);
+  }
+
+  void write_episodes(const std::vector<timeline::Stretch>& stretches) {
+    std::string text;
+    append_episode_header(text);
+    for (const timeline::Episode& episode :
+         timeline::episodes_of(stretches, *rig_->model, timeline_.last_sources(), join_ns_)) {
+      const auto channel = static_cast<std::size_t>(episode.stretch.channel);
+      append_episode_rows(text, names_, rig_->model->channels[channel].parts(), episode, options_.time);
+    }
+    episodes_.write(text);
+    if (stretches_.left_out() == 0) return;
+    log_.progress().say("steelyard: " + std::to_string(stretches_.left_out()) +
+                        " more episodes were left out: at most " +
+                        std::to_string(timeline::Stretches::kMost) + " are written");
   }
 
   void notes() {
@@ -165,12 +203,11 @@ class Replay {
   }
 
   int finish() {
-    if (options_.words && going()) summarise();
+    if ((options_.words || with_episodes()) && going()) summarise();
     notes();
     const bool all_used = log_.close();
-    for (Output* const output : {&out_, &channels_}) {
-      if (output == &channels_ && !with_channels()) continue;
-      if (output->finish()) continue;
+    for (Output* const output : {&out_, &channels_, &episodes_}) {
+      if (!is_asked_for(output) || output->finish()) continue;
       complain(output->error());
       return kFailed;
     }
@@ -183,26 +220,34 @@ class Replay {
   Names names_;
   timeline::Timeline timeline_;
   std::uint32_t source_;
-  Stretches stretches_;
+  engine::TimeNs join_ns_;
+  timeline::Stretches stretches_;
+  timeline::Stretches::Calls calls_;
   Output out_;
   Output channels_;
+  Output episodes_;
   Output words_{""};
   OrderedLog log_;
   std::vector<std::uint64_t> out_of_range_;
   std::vector<timeline::Outcome> outcomes_;
-  std::vector<ChannelView> views_;
   engine::Estimate estimate_;
-  engine::Estimate full_;  // for words
+  engine::Estimate full_;  // for words and episodes
+  bool has_full_ = false;  // of this moment
   std::string text_;
 };
 
 int replay(const Options& options) {
-  if (options.settled || !options.report.empty() || !options.episodes.empty()) {
-    complain("replay: --settled, --report and --episodes are not there yet");
+  if (options.settled || !options.report.empty()) {
+    complain("replay: --settled and --report are not there yet");
     return kWrongInput;
   }
   if (!options.out.empty() && options.out == options.channels) {
     complain("replay: --out and --channels are the same file");
+    return kWrongInput;
+  }
+  if (!options.episodes.empty() &&
+      (options.episodes == options.out || options.episodes == options.channels)) {
+    complain("replay: --episodes is the same file as another output");
     return kWrongInput;
   }
   std::shared_ptr<const rig::Rig> rig = load_rig_file(options.rig);
@@ -226,7 +271,8 @@ void add_replay(CLI::App& app, Run& run) {
       ->type_name("FILE");
   command
       ->add_option("--channels", options->channels,
-                   "File for one row per time and channel: trust, probabilities, …")
+                   "File for one row per time and channel (of a vector channel: per part): trust, "
+                   "probabilities, status, …")
       ->type_name("FILE");
   command->add_flag(
       "--words", options->words,
@@ -235,7 +281,12 @@ void add_replay(CLI::App& app, Run& run) {
   add_time_option(*command, options->time);
   command->add_flag("--settled", options->settled, "Not there yet");
   command->add_option("--report", options->report, "Not there yet")->type_name("FILE");
-  command->add_option("--episodes", options->episodes, "Not there yet")->type_name("FILE");
+  command
+      ->add_option(
+          "--episodes", options->episodes,
+          "File for one row per spell in which a channel was not sound: when, what, how large, what else "
+          "it could have been, and which spells have one cause")
+      ->type_name("FILE");
   command->footer(
       "A cell of the log that cannot be used refuses its own reading alone: the first 10 are shown, all are "
       "counted,\n"

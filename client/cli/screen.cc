@@ -7,6 +7,7 @@
 
 #include <algorithm>
 #include <cmath>
+#include <utility>
 
 #include "lib/log/text.h"
 #include "timeline/words.h"
@@ -50,6 +51,45 @@ std::size_t place(double value, double lo, double hi) {
   return static_cast<std::size_t>(std::lround(share * static_cast<double>(kBarWidth - 1)));
 }
 
+/// Lines of at most `width` characters, broken at blanks, the first not before `head` characters; those after
+/// the first are indented.
+std::vector<std::string> wrapped(const std::string& text, std::size_t head, std::size_t width) {
+  constexpr std::size_t kIndent = 4;
+  constexpr std::size_t kLeast = 20;  // characters for words that are worth a line
+  if (width < head + kLeast) return {cut(text, width)};
+  std::vector<std::string> lines;
+  std::string rest = text;
+  while (characters(rest) > width && lines.size() < 8) {
+    const std::string begin = cut(rest, width + 1);
+    const std::size_t blank = begin.rfind(' ');
+    const std::size_t least = lines.empty() ? head : kIndent;
+    if (blank == std::string::npos || blank <= least) break;
+    lines.push_back(rest.substr(0, blank));
+    rest = std::string(kIndent, ' ') + rest.substr(blank + 1);
+  }
+  lines.push_back(cut(rest, width));
+  return lines;
+}
+
+/// "explained by   93 %  sonic offset by +0.182 m (…) for 42 s"; none where every channel is sound.
+std::vector<std::string> explanation_lines(const Picture& picture, std::size_t columns) {
+  const auto& channels = picture.estimate.channels;
+  const bool all_sound = std::all_of(channels.begin(), channels.end(), [](const auto& channel) {
+    return timeline::leading_kind(channel) == timeline::kSoundKind;
+  });
+  std::vector<std::string> lines;
+  const std::size_t count = std::min(picture.explanations.size(), picture.estimate.explanations.size());
+  for (std::size_t i = 0; i < count && !all_sound; ++i) {
+    const std::string head = (i == 0 ? "explained by   " : "or else        ") +
+                             padded(timeline::percent(picture.estimate.explanations[i].probability), 7);
+    for (std::string& line : wrapped(head + picture.explanations[i], characters(head), columns)) {
+      lines.push_back(std::move(line));
+    }
+  }
+  if (!lines.empty()) lines.emplace_back();
+  return lines;
+}
+
 /// "1" is the unit of what has none.
 std::string unit_text(const std::string& unit) { return unit.empty() || unit == "1" ? "" : " " + unit; }
 
@@ -80,9 +120,12 @@ std::vector<std::string> Screen::draw(const Picture& picture, ScreenSize size) {
   lines.emplace_back();
   const std::size_t channel_width = widest(picture.names.channels);
   for (std::size_t i = 0; i < picture.names.channels.size(); ++i) {
-    lines.push_back(channel_line(picture, i, channel_width, size.columns));
+    for (std::string& line : channel_lines(picture, i, channel_width, size.columns)) {
+      lines.push_back(std::move(line));
+    }
   }
   lines.emplace_back();
+  for (std::string& line : explanation_lines(picture, size.columns)) lines.push_back(std::move(line));
   lines.push_back(cut("Advice only: trips and interlocks must not depend on it.", size.columns));
   lines.front() = cut(lines.front(), size.columns);
   if (lines.size() > size.rows) lines.resize(size.rows);
@@ -109,21 +152,21 @@ std::string Screen::state_line(const Picture& picture, std::size_t state, std::s
          (told.two_peaked ? "  two peaks" : "");
 }
 
-/// "sonic   0.97 [###################.]  1.0 s  sonic is sound, 99 %"
-std::string Screen::channel_line(const Picture& picture, std::size_t channel, std::size_t name_width,
-                                 std::size_t columns) {
+/// "sonic   0.97 [###################.]  1.0 s  sonic is sound, 99 %"; long sentences go on below.
+std::vector<std::string> Screen::channel_lines(const Picture& picture, std::size_t channel,
+                                               std::size_t name_width, std::size_t columns) {
   const engine::ChannelEstimate& told = picture.estimate.channels[channel];
   const double trust = std::isfinite(told.trust) ? std::clamp(told.trust, 0.0, 1.0) : 0.0;
   const auto full = static_cast<std::size_t>(std::lround(trust * static_cast<double>(kTrustWidth)));
   const std::string bar = "[" + std::string(full, '#') + std::string(kTrustWidth - full, '.') + "]";
-  std::string line = padded(picture.names.channels[channel], name_width) + "  trust " +
-                     padded(timeline::rounded(trust, 0.03), 4) + " " + bar + "  " +
-                     padded(age_text(told.age_s), 8) + picture.words[channel];
-  line = cut(line, columns);
-  if (!colour_) return line;
-  // Where sound leads the line stands as it is; else it stands out.
-  const bool sound = timeline::leading_condition(told) == engine::Condition::kSound && told.silent <= 0.5;
-  return sound ? line : "\x1b[1;35m" + line + "\x1b[0m";
+  const std::string head = padded(picture.names.channels[channel], name_width) + "  trust " +
+                           padded(timeline::rounded(trust, 0.03), 4) + " " + bar + "  " +
+                           padded(age_text(told.age_s), 8);
+  std::vector<std::string> lines = wrapped(head + picture.words[channel], characters(head), columns);
+  // Where sound leads the lines stand as they are; else they stand out.
+  if (!colour_ || timeline::leading_kind(told) == timeline::kSoundKind) return lines;
+  for (std::string& line : lines) line = "\x1b[1;35m" + line + "\x1b[0m";
+  return lines;
 }
 
 }  // namespace steelyard::client

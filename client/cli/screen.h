@@ -1,6 +1,7 @@
 // SPDX-License-Identifier: Apache-2.0
-// The picture that watch shows in a terminal: the estimate with error bars, and for each channel a bar of
-// trust and the leading explanation in words. Colour only repeats what bars and words say.
+// The picture that watch shows in a terminal: the estimate with error bars, for each channel a bar of trust
+// and what is the matter in words, and where a channel is not sound the explanations with their
+// probabilities. Colour only repeats what bars and words say.
 #pragma once
 
 #include <string>
@@ -32,8 +33,8 @@ class Screen {
     bool any = false;
   };
   std::string state_line(const Picture& picture, std::size_t state, std::size_t name_width);
-  std::string channel_line(const Picture& picture, std::size_t channel, std::size_t name_width,
-                           std::size_t columns);
+  std::vector<std::string> channel_lines(const Picture& picture, std::size_t channel, std::size_t name_width,
+                                         std::size_t columns);
 
   bool colour_;
   std::vector<Span> spans_;

@@ -22,7 +22,7 @@
 #include "cli/signals.h"
 #include "lib/client.h"
 #include "lib/clock.h"
-#include "lib/log/stretches.h"
+#include "timeline/stretches.h"
 
 namespace steelyard::client {
 namespace {
@@ -145,24 +145,20 @@ class ShowWords : public Show {
     if (once_) return every_channel(picture);
     if (!stretches_ || picture.names != names_) {
       names_ = picture.names;
-      units_ = picture.channel_units;
       stretches_.emplace(names_.channels.size(), join_ns_);
     }
-    std::vector<ChannelView> views;
-    for (const engine::ChannelEstimate& channel : picture.estimate.channels)
-      views.push_back(view_of(channel));
-    stretches_->add(
-        picture.estimate.time_ns, views,
-        [&picture](int channel) { return picture.words[static_cast<std::size_t>(channel)]; },
-        [this](const Change& change) { line(change.time_ns, change.words); });
+    timeline::Stretches::Calls calls;
+    calls.words = [&picture](int channel) { return picture.words[static_cast<std::size_t>(channel)]; };
+    calls.on_change = [this](const timeline::Change& change) { line(change.time_ns, change.words); };
+    stretches_->add(picture.estimate, calls);
     return true;
   }
 
   void end() override {
     if (!stretches_) return;
-    const std::vector<Stretch> all = stretches_->finish();
-    out_.write(stretches_text(all, stretches_->left_out(), names_.channels, units_,
-                              [this](engine::TimeNs t) { return time_text(t, style_); }));
+    const std::vector<timeline::Stretch> all = stretches_->finish();
+    out_.write(timeline::stretches_text(all, stretches_->left_out(), names_.channels, names_.units,
+                                        [this](engine::TimeNs t) { return time_text(t, style_); }));
     out_.flush();
   }
 
@@ -181,8 +177,7 @@ class ShowWords : public Show {
   bool once_;
   engine::TimeNs join_ns_;
   Names names_;
-  std::vector<std::string> units_;
-  std::optional<Stretches> stretches_;
+  std::optional<timeline::Stretches> stretches_;
 };
 
 std::unique_ptr<Show> make_show(Output& out, const Options& options, double response_s) {

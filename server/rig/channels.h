@@ -1,10 +1,8 @@
 // SPDX-License-Identifier: Apache-2.0
-// The channels of a description, and the groups of them that fail together.
+// The channels of a description.
 #pragma once
 
 #include <span>
-#include <string>
-#include <string_view>
 
 #include "engine/model.h"
 #include "rig/laws.h"
@@ -23,8 +21,5 @@ struct ReadChannel {
 /// it.
 [[nodiscard]] ReadChannel read_channel(const Item& item, std::span<const engine::StateModel> states,
                                        Context& context);
-
-/// Checks `common`: groups of channels and the share of faults that strike a group together.
-void check_common(const Item& item, std::span<const std::string_view> channels, Context& context);
 
 }  // namespace steelyard::rig

@@ -13,9 +13,10 @@
 namespace steelyard::rig {
 namespace {
 
-constexpr std::array<std::string_view, 16> kNumberKeys{
-    "start",  "start_sd", "needs",  "sd",          "times",          "share",       "bias_sd",  "range",
-    "cutoff", "modulo",   "strays", "offset_size", "prior_readings", "correlation", "deadband", "resolution"};
+constexpr std::array<std::string_view, 17> kNumberKeys{
+    "start",          "start_sd",    "needs",    "sd",         "times",       "share",
+    "bias_sd",        "range",       "cutoff",   "modulo",     "strays",      "offset_size",
+    "prior_readings", "correlation", "deadband", "resolution", "freeze_share"};
 
 void append_escaped(char c, std::string& out) {
   constexpr std::string_view kDigits = "0123456789abcdef";

@@ -17,7 +17,6 @@ namespace steelyard::rig {
 /// What the readers of a description's parts share.
 struct Context {
   Problems& problems;
-  Problems& unsupported;  ///< right, but not there yet: reported where there are no other problems
   double response_s = 1.0;
   Scope scope = {};
   std::vector<double> states = {};  ///< where the machine starts

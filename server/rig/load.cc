@@ -7,6 +7,7 @@
 #include <utility>
 
 #include "rig/channels.h"
+#include "rig/common.h"
 #include "rig/document.h"
 #include "rig/laws.h"
 #include "rig/machine.h"
@@ -18,19 +19,17 @@
 namespace steelyard::rig {
 namespace {
 
-constexpr std::array<std::string_view, 13> kTopKeys{"rig",    "response", "horizon", "lag",    "constants",
-                                                    "states", "inputs",   "motion",  "unrest", "jolts",
-                                                    "still",  "common",   "channels"};
+constexpr std::array<std::string_view, 14> kTopKeys{
+    "rig",    "response", "horizon", "lag",   "constants", "states",       "inputs",
+    "motion", "unrest",   "jolts",   "still", "common",    "freeze_share", "channels"};
 constexpr std::size_t kMaxConstants = 100;
 constexpr double kHorizonResponses = 10.0;
 constexpr double kLagResponses = 2.0;
 
 class Loader {
  public:
-  Loader(const Node& top, Problems& problems, Problems& unsupported)
-      : problems_(problems),
-        fields_({&top, ""}, kTopKeys, problems),
-        context_{.problems = problems, .unsupported = unsupported} {}
+  Loader(const Node& top, Problems& problems)
+      : problems_(problems), fields_({&top, ""}, kTopKeys, problems), context_{.problems = problems} {}
 
   std::shared_ptr<Rig> load() {
     read_head();
@@ -127,16 +126,32 @@ class Loader {
     read_unrest(entries("unrest", unlimited, fields_.optional("unrest")), *model_, context_);
   }
 
+  // The parts of all channels so far; tells once where they become too many.
+  int count_parts(const Item& item, int before, int more) {
+    const int parts = before + more;
+    const Node* const reads = item.node->find("reads");
+    const bool told = reads != nullptr && reads->items.size() > static_cast<std::size_t>(engine::kMaxParts);
+    if (before <= engine::kMaxParts && parts > engine::kMaxParts && !told) {
+      problems_.add(item.node->key_at, item.path,
+                    "makes " + std::to_string(parts) + " parts in all channels; at most " +
+                        std::to_string(engine::kMaxParts) + " are possible");
+    }
+    return parts;
+  }
+
   void read_channels(const std::vector<Item>& items) {
-    std::vector<std::string_view> names;
+    int parts = 0;
     for (const Item& item : items) {
       ReadChannel channel = read_channel(item, model_->states, context_);
-      names.push_back(item.node->key);
+      parts = count_parts(item, parts, channel.model.parts());
       model_->channels.push_back(std::move(channel.model));
       rig_->labels.push_back(std::move(channel.labels));
       rig_->reading_is_affine.push_back(channel.is_affine);
     }
-    if (const auto item = fields_.optional("common")) check_common(*item, names, context_);
+    if (const auto item = fields_.optional("common")) read_common(*item, *model_, context_);
+    if (const auto item = fields_.optional("freeze_share")) {
+      model_->freeze_share = read_number(*item, from_to(0, 1), problems_).value_or(model_->freeze_share);
+    }
   }
 
   Problems& problems_;
@@ -156,12 +171,12 @@ void sort_by_name(Node& top) {
   }
 }
 
-std::shared_ptr<Rig> load_checked(std::string_view text, Problems& problems, Problems& unsupported) {
+std::shared_ptr<Rig> load_checked(std::string_view text, Problems& problems) {
   std::optional<Node> top = parse_document(text, problems);
   if (!top) return nullptr;
   if (is_json(text)) sort_by_name(*top);
-  std::shared_ptr<Rig> rig = Loader(*top, problems, unsupported).load();
-  if (!problems.empty() || !unsupported.empty()) return nullptr;
+  std::shared_ptr<Rig> rig = Loader(*top, problems).load();
+  if (!problems.empty()) return nullptr;
   // Nothing should be left for the engine to find; if it does, say so rather than run.
   if (std::string why = rig->model->problem(); !why.empty()) problems.add({0, 0}, "", std::move(why));
   return problems.empty() ? rig : nullptr;
@@ -172,10 +187,9 @@ std::shared_ptr<Rig> load_checked(std::string_view text, Problems& problems, Pro
 Loaded load(std::string_view text, std::string_view file) {
   const std::string_view content = without_byte_order_mark(text);
   Problems problems(file, content);
-  Problems unsupported(file, content);
   Loaded out;
   try {
-    const std::shared_ptr<Rig> rig = load_checked(content, problems, unsupported);
+    const std::shared_ptr<Rig> rig = load_checked(content, problems);
     if (rig) rig->text = text;
     out.rig = rig;
   } catch (const std::exception& error) {  // no memory left, or a defect of ours
@@ -183,7 +197,7 @@ Loaded load(std::string_view text, std::string_view file) {
   } catch (...) {
     problems.add({0, 0}, "", "cannot be loaded");
   }
-  out.problems = problems.empty() ? unsupported.take() : problems.take();
+  out.problems = problems.take();
   if (!out.problems.empty()) out.rig = nullptr;
   return out;
 }

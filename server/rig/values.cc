@@ -53,7 +53,9 @@ std::optional<Item> Fields::required(std::string_view key) const {
   return item;
 }
 
-bool Limit::allows(double value) const { return (value > lo || (with_lo && value == lo)) && value < hi; }
+bool Limit::allows(double value) const {
+  return (value > lo || (with_lo && value == lo)) && (value < hi || (with_hi && value == hi));
+}
 
 std::string Limit::rule() const {
   std::string out;
@@ -61,7 +63,7 @@ std::string Limit::rule() const {
     out = (with_lo ? "at least " : "greater than ") + number_text(lo);
   }
   if (hi < std::numeric_limits<double>::infinity()) {
-    out += (out.empty() ? "less than " : " and less than ") + number_text(hi);
+    out += (out.empty() ? "" : " and ") + std::string(with_hi ? "at most " : "less than ") + number_text(hi);
   }
   return out;
 }

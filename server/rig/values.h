@@ -41,6 +41,7 @@ struct Limit {
   double lo = -std::numeric_limits<double>::infinity();
   double hi = std::numeric_limits<double>::infinity();
   bool with_lo = false;  ///< lo itself is allowed
+  bool with_hi = false;
   [[nodiscard]] bool allows(double value) const;
   [[nodiscard]] std::string rule() const;  ///< "greater than 0", or empty
 };
@@ -48,6 +49,12 @@ struct Limit {
 [[nodiscard]] constexpr Limit above(double lo) { return {.lo = lo}; }
 [[nodiscard]] constexpr Limit at_least(double lo) { return {.lo = lo, .with_lo = true}; }
 [[nodiscard]] constexpr Limit between(double lo, double hi) { return {.lo = lo, .hi = hi}; }
+[[nodiscard]] constexpr Limit at_least_and_below(double lo, double hi) {
+  return {.lo = lo, .hi = hi, .with_lo = true};
+}
+[[nodiscard]] constexpr Limit from_to(double lo, double hi) {
+  return {.lo = lo, .hi = hi, .with_lo = true, .with_hi = true};
+}
 
 struct Range {
   double lo = 0.0;

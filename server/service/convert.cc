@@ -2,8 +2,6 @@
 // Field by field from the engine's estimate to the wire.
 #include "service/convert.h"
 
-#include <spdlog/fmt/fmt.h>
-
 #include <algorithm>
 #include <cmath>
 
@@ -46,6 +44,19 @@ void add_inputs(const Picture& picture, v1::Moment& message) {
   }
 }
 
+void add_parts(const engine::ChannelEstimate& from, const engine::ChannelModel& model,
+               v1::ChannelEstimate& to) {
+  for (std::size_t i = 0; i < from.others.size(); ++i) {
+    const engine::PartEstimate& part = from.others[i];
+    v1::PartEstimate& other = *to.add_others();
+    other.set_unit(model.part(static_cast<int>(i) + 1).unit);
+    other.set_noise_sd(part.noise_sd);
+    set_interval(part.noise_sd90, *other.mutable_noise_sd90());
+    other.set_offset(part.offset);
+    other.set_offset_sd(part.offset_sd);
+  }
+}
+
 void fill_channel(const engine::ChannelEstimate& from, v1::ChannelEstimate& to) {
   to.set_trust(from.trust);
   for (const double probability : from.probability) to.add_probability(probability);
@@ -67,7 +78,10 @@ void add_channels(const Picture& picture, v1::Moment& message) {
     to.set_name(model.channels[i].name);
     to.set_unit(model.channels[i].unit);
     fill_channel(picture.estimate.channels[i], to);
-    to.set_words(timeline::channel_words(*picture.rig, static_cast<int>(i), picture.estimate));
+    add_parts(picture.estimate.channels[i], model.channels[i], to);
+    const engine::TimeNs since_ns = i < picture.since_ns.size() ? picture.since_ns[i] : 0;
+    to.set_since_ns(timeline::since_of(picture.estimate.channels[i], picture.estimate, since_ns));
+    to.set_words(timeline::channel_words(*picture.rig, static_cast<int>(i), picture.estimate, since_ns));
   }
 }
 
@@ -76,48 +90,22 @@ void add_explanations(const Picture& picture, v1::Moment& message) {
   for (const engine::Explanation& from : picture.estimate.explanations) {
     v1::Explanation& to = *message.add_explanations();
     to.set_probability(from.probability);
-    to.set_words(explanation_words(*picture.rig, from));
+    to.set_words(timeline::explanation_words(*picture.rig, from, picture.estimate.time_ns));
     for (const engine::Finding& finding : from.findings) {
       v1::Finding& part = *to.add_findings();
       part.set_channel(model.channels[static_cast<std::size_t>(finding.channel)].name);
       part.set_condition(static_cast<v1::Condition>(finding.condition));
       part.set_offset(finding.offset);
       part.set_offset_sd(finding.offset_sd);
+      part.set_since_ns(finding.since_ns);
+      if (model.channels[static_cast<std::size_t>(finding.channel)].parts() > 1) {
+        part.set_part(static_cast<std::uint32_t>(finding.part) + 1);
+      }
     }
   }
 }
 
-std::string finding_words(const rig::Rig& rig, const engine::Finding& finding) {
-  const auto& channel = rig.model->channels[static_cast<std::size_t>(finding.channel)];
-  const std::string size = timeline::rounded(finding.offset, finding.offset_sd);
-  const std::string sd = timeline::rounded(finding.offset_sd, finding.offset_sd);
-  const char* condition = timeline::condition_name(finding.condition);
-  switch (finding.condition) {
-    case engine::Condition::kSound:
-    case engine::Condition::kFrozen:
-      return fmt::format("{} {}", channel.name, condition);
-    case engine::Condition::kStuck:
-      return fmt::format("{} {} at {} {}", channel.name, condition, size, channel.unit);
-    case engine::Condition::kCreeping:
-    case engine::Condition::kOffset:
-    case engine::Condition::kWandering:
-      break;
-  }
-  return fmt::format("{} {} by {}{} ± {} {}", channel.name, condition, finding.offset > 0 ? "+" : "", size,
-                     sd, channel.unit);
-}
-
 }  // namespace
-
-std::string explanation_words(const rig::Rig& rig, const engine::Explanation& explanation) {
-  if (explanation.findings.empty()) return "all channels are sound";
-  std::string words;
-  for (const engine::Finding& finding : explanation.findings) {
-    if (!words.empty()) words += "; ";
-    words += finding_words(rig, finding);
-  }
-  return words;
-}
 
 v1::EstimateQuality quality_of(const Picture& picture) {
   if (!picture.started || picture.at_horizon) return v1::ESTIMATE_BAD;

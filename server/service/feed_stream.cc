@@ -38,7 +38,7 @@ void FeedStream::OnReadDone(bool ok) {
 }
 
 grpc::Status FeedStream::take_request() {
-  std::vector<Row> rows;
+  Rows rows;
   grpc::Status status;
   switch (request_.content_case()) {
     case v1::FeedRequest::kOpening:

@@ -51,7 +51,15 @@ void FeedDesk::end_all(const grpc::Status& status) {
 void FeedDesk::look_up(Feed& feed, Machine& machine) const {
   feed.number = machine.source_number(feed.name);
   feed.table.clear();
-  for (const std::string& name : feed.names) feed.table.push_back(machine.rig().find(name));
+  feed.parts.clear();
+  for (const std::string& name : feed.names) {
+    const std::optional<rig::Signal> signal = machine.rig().find(name);
+    const bool is_channel = signal && !signal->is_input;
+    const auto& channels = machine.rig().model->channels;
+    const int parts = is_channel ? channels[static_cast<std::size_t>(signal->index)].parts() : 1;
+    feed.table.push_back(signal);
+    feed.parts.push_back(static_cast<std::uint32_t>(parts));
+  }
 }
 
 v1::Opened FeedDesk::describe(const Feed& feed, const Machine& machine) const {
@@ -71,11 +79,18 @@ void FeedDesk::look_up_again(Machine& machine) {
   }
 }
 
-void FeedDesk::begin(const std::shared_ptr<FeedSession>& session, std::vector<Row> rows) {
+void FeedDesk::begin(const std::shared_ptr<FeedSession>& session, Rows message) {
   const auto entry = feeds_.find(session.get());
   if (entry == feeds_.end()) return;
   current_ = session.get();
-  rows_ = std::move(rows);
+  const std::size_t wanted = share_out(message, entry->second.parts);
+  misfit_.clear();
+  if (wanted != message.more_values.size()) {
+    misfit_ = fmt::format("batch.more_values: has {}; its rows of vector channels must have {} together",
+                          message.more_values.size(), wanted);
+  }
+  rows_ = std::move(message.rows);
+  more_values_ = std::move(message.more_values);
   done_ = 0;
   refused_.clear();
   last_sequence_ = rows_.empty() ? 0 : rows_.back().sequence;
@@ -132,12 +147,7 @@ void FeedDesk::sift(const Row& row, const Machine& machine) {
     return refuse(row.sequence, v1::UNKNOWN_CHANNEL,
                   fmt::format("{}: is no channel or input of rig {}", name, machine.rig().name));
   }
-  // What a source calls bad may be any number.
-  const bool usable = row.quality == v1::GOOD || row.quality == v1::UNCERTAIN;
-  if (usable && !std::isfinite(row.value)) {
-    return refuse(row.sequence, v1::NOT_FINITE,
-                  fmt::format("{}: value is {}; must be finite", name, row.value));
-  }
+  if (!check_values(row)) return;
   if (row.quality < 0 || row.quality > static_cast<int>(engine::Quality::kSimulated)) {
     return refuse(row.sequence, v1::UNKNOWN_QUALITY,
                   fmt::format("{}: quality is {}; must be from 0 to 4", name, row.quality));
@@ -154,9 +164,40 @@ void FeedDesk::sift(const Row& row, const Machine& machine) {
                     name, row.time_ns, 1e-9 * static_cast<double>(row.time_ns - now_ns),
                     limits_.ahead_ns / 1'000'000'000));
   }
-  readings_.push_back({row.time_ns, *signal, row.value, static_cast<engine::Quality>(row.quality),
+  readings_.push_back({row.time_ns, *signal, values_of(row), static_cast<engine::Quality>(row.quality),
                        feed.number, ++feed.source->counted});
   passed_.push_back(row);
+}
+
+bool FeedDesk::check_values(const Row& row) {
+  const Feed& feed = feeds_.at(current_);
+  const std::string& name = feed.names[row.channel];
+  const std::uint32_t parts = feed.parts[row.channel];
+  // The rig may have changed since the message was begun.
+  if (!misfit_.empty() || row.more_count + 1 != parts) {
+    refuse(row.sequence, v1::WRONG_PARTS,
+           misfit_.empty() ? fmt::format("{}: has {} values; must have {}, one for each part", name,
+                                         row.more_count + 1, parts)
+                           : misfit_);
+    return false;
+  }
+  // What a source calls bad may be any number.
+  if (row.quality != v1::GOOD && row.quality != v1::UNCERTAIN) return true;
+  const timeline::Values values = values_of(row);
+  for (std::size_t i = 0; i < values.size(); ++i) {
+    const double value = values.all()[i];
+    if (std::isfinite(value)) continue;
+    const std::string which = parts == 1 ? name : fmt::format("{}.{}", name, i + 1);
+    refuse(row.sequence, v1::NOT_FINITE, fmt::format("{}: value is {}; must be finite", which, value));
+    return false;
+  }
+  return true;
+}
+
+timeline::Values FeedDesk::values_of(const Row& row) const {
+  timeline::Values values(row.value);
+  for (std::uint32_t i = 0; i < row.more_count; ++i) values.add(more_values_[row.more_at + i]);
+  return values;
 }
 
 void FeedDesk::judge(const std::vector<timeline::Outcome>& outcomes, const Machine& machine) {

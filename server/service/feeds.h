@@ -33,7 +33,7 @@ class FeedDesk {
 
   /// Starts on a message of readings; busy() until run_chunk() has run all of them. Readings of a feed that
   /// is no longer open are dropped: it was told so, and their source sends them again. busy() must be false.
-  void begin(const std::shared_ptr<FeedSession>& session, std::vector<Row> rows);
+  void begin(const std::shared_ptr<FeedSession>& session, Rows message);
   [[nodiscard]] bool busy() const { return current_ != nullptr; }
   /// Runs the next readings, whole times only (see Limits::chunk_*).
   void run_chunk(Machine& machine, const timeline::Timeline::OnMoment& on_moment);
@@ -53,6 +53,7 @@ class FeedDesk {
     std::uint32_t number = 0;  // of the source in the timeline
     std::vector<std::string> names;
     std::vector<std::optional<rig::Signal>> table;  // by name
+    std::vector<std::uint32_t> parts;               // likewise; 1 for inputs and what is not known
     std::uint64_t refused_total = 0;
     std::uint64_t repeated_total = 0;
   };
@@ -63,6 +64,9 @@ class FeedDesk {
   [[nodiscard]] std::size_t chunk_end() const;
   /// Into `readings_`, or refused.
   void sift(const Row& row, const Machine& machine);
+  /// False: refused, since it does not have a value for each part, or not a finite one.
+  [[nodiscard]] bool check_values(const Row& row);
+  [[nodiscard]] timeline::Values values_of(const Row& row) const;
   void judge(const std::vector<timeline::Outcome>& outcomes, const Machine& machine);
   void refuse(std::uint64_t sequence, v1::RefusalReason reason, const std::string& message);
   void finish_message();
@@ -74,8 +78,10 @@ class FeedDesk {
 
   // The message that is being run.
   const FeedSession* current_ = nullptr;
-  std::vector<Row> rows_;  // sorted by time
-  std::size_t done_ = 0;   // of them
+  std::vector<Row> rows_;            // sorted by time
+  std::size_t done_ = 0;             // of them
+  std::vector<double> more_values_;  // of them
+  std::string misfit_;               // not empty: why none of them can be used
   std::uint64_t last_sequence_ = 0;
   std::vector<v1::Refused> refused_;
 

@@ -14,8 +14,8 @@ namespace steelyard::service {
 namespace {
 
 std::size_t readings_in(const FeedMessage& message) {
-  const auto* rows = std::get_if<std::vector<Row>>(&message.content);
-  return rows ? rows->size() : 0;
+  const auto* rows = std::get_if<Rows>(&message.content);
+  return rows ? rows->rows.size() : 0;
 }
 
 }  // namespace
@@ -186,7 +186,7 @@ void Host::handle(FeedMessage message) {
   if (ended_) return message.feed->end(*ended_);
   if (auto* open = std::get_if<OpenFeed>(&message.content)) {
     feeds_.open(message.feed, open->source, std::move(open->channels), machine_);
-  } else if (auto* rows = std::get_if<std::vector<Row>>(&message.content)) {
+  } else if (auto* rows = std::get_if<Rows>(&message.content)) {
     feeds_.begin(message.feed, std::move(*rows));
   } else {
     feeds_.close(message.feed.get());

@@ -31,7 +31,7 @@ struct CloseFeed {};
 /// From `feed`, in its order.
 struct FeedMessage {
   std::shared_ptr<FeedSession> feed;
-  std::variant<OpenFeed, std::vector<Row>, CloseFeed> content;
+  std::variant<OpenFeed, Rows, CloseFeed> content;
 };
 
 class Host final : public Job, public std::enable_shared_from_this<Host> {

@@ -11,6 +11,7 @@
 
 #include "rig/rig.h"
 #include "service/clock.h"
+#include "timeline/stretches.h"
 #include "timeline/timeline.h"
 
 namespace steelyard::service {
@@ -20,8 +21,9 @@ struct Picture {
   std::shared_ptr<const rig::Rig> rig;
   std::uint64_t revision = 0;
   engine::Estimate estimate;
-  engine::TimeNs clock_ns = 0;   ///< the rig's; 0 while !started
-  engine::TimeNs behind_ns = 0;  ///< the service's clock minus the estimate's time; 0 while !started
+  std::vector<engine::TimeNs> since_ns;  ///< by channel, since when it has not been sound; 0: it is
+  engine::TimeNs clock_ns = 0;           ///< the rig's; 0 while !started
+  engine::TimeNs behind_ns = 0;          ///< the service's clock minus the estimate's time; 0 while !started
   bool started = false;
   bool at_horizon = false;  ///< the newest reading is one horizon old or more
 };
@@ -56,11 +58,16 @@ class Machine {
 
  private:
   [[nodiscard]] engine::TimeNs since_newest_ns() const;
+  void restart();
+  /// Lets the stretches see the machine at a moment that has been run.
+  void follow(engine::TimeNs time_ns);
 
   const Clock& clock_;
   std::shared_ptr<const rig::Rig> rig_;
   std::uint64_t revision_;
   std::unique_ptr<timeline::Timeline> timeline_;
+  std::unique_ptr<timeline::Stretches> stretches_;  // for the words: since when
+  engine::Estimate followed_;                       // storage of follow()
   SteadyTime newest_came_;
 };
 

@@ -29,6 +29,11 @@ std::vector<int> name_ranks(const engine::Model& model) {
   return rank;
 }
 
+bool all_finite(const Values& values) {
+  const auto all = values.all();
+  return std::all_of(all.begin(), all.end(), [](double value) { return std::isfinite(value); });
+}
+
 // A 4-20 mA transmitter tells its own failure by a current beyond the range (NAMUR NE 43, limits from
 // memory).
 bool failure_signal(const engine::ChannelModel& channel, double value) {
@@ -40,7 +45,10 @@ bool failure_signal(const engine::ChannelModel& channel, double value) {
 }  // namespace
 
 Timeline::Timeline(std::shared_ptr<const rig::Rig> rig)
-    : rig_(std::move(rig)), engine_(rig_->model), rank_(name_ranks(*rig_->model)) {}
+    : rig_(std::move(rig)),
+      engine_(rig_->model),
+      rank_(name_ranks(*rig_->model)),
+      last_sources_(rig_->model->channels.size(), -1) {}
 
 std::uint32_t Timeline::source_number(std::string_view name) {
   for (std::size_t i = 0; i < sources_.size(); ++i)
@@ -102,25 +110,34 @@ void Timeline::run(std::span<Reading> batch, std::vector<Outcome>& outcomes, con
   if (open && on_moment) on_moment(moment);
 }
 
+std::size_t Timeline::parts_of(const rig::Signal& signal) const {
+  if (signal.is_input) return 1;
+  return static_cast<std::size_t>(rig_->model->channels[static_cast<std::size_t>(signal.index)].parts());
+}
+
 Outcome Timeline::take(const Item& item) {
   const Reading& r = item.reading;
   if (item.duplicate) return Outcome::kDuplicate;
+  if (r.values.size() != parts_of(r.signal)) return Outcome::kWrongParts;
   const bool usable = r.quality == Quality::kGood || r.quality == Quality::kUncertain;
   // A source may send any number with a reading that it calls bad.
-  if (usable && !std::isfinite(r.value)) return Outcome::kNotFinite;
+  if (usable && !all_finite(r.values)) return Outcome::kNotFinite;
   if (engine_.started() && item.moment_ns < engine_.time()) return Outcome::kTooOld;
   clock_ns_ = started_ ? std::max(clock_ns_, r.time_ns) : r.time_ns;
   started_ = true;
   if (!r.signal.is_input) return take_channel(item);
-  engine_.set_input(item.moment_ns, r.signal.index, r.value, usable);
+  engine_.set_input(item.moment_ns, r.signal.index, r.values.first(), usable);
   return Outcome::kInput;
 }
 
 Outcome Timeline::take_channel(const Item& item) {
   const Reading& r = item.reading;
   const auto& channel = rig_->model->channels[static_cast<std::size_t>(r.signal.index)];
-  const Quality quality = failure_signal(channel, r.value) ? Quality::kBad : r.quality;
-  switch (engine_.read(item.moment_ns, r.signal.index, r.value, quality)) {
+  const Quality quality = failure_signal(channel, r.values.first()) ? Quality::kBad : r.quality;
+  // Who sent it tells the engine which channels can freeze together.
+  const auto source = static_cast<int>(r.source);
+  last_sources_[static_cast<std::size_t>(r.signal.index)] = source;
+  switch (engine_.read(item.moment_ns, r.signal.index, r.values.all(), quality, source)) {
     case engine::Fate::kFused:
       return Outcome::kFused;
     case engine::Fate::kSameMeasurement:

@@ -14,14 +14,15 @@
 #include "engine/engine.h"
 #include "rig/rig.h"
 #include "timeline/sequence_set.h"
+#include "timeline/values.h"
 
 namespace steelyard::timeline {
 
-/// One value from one source. `source` is a number from Timeline::source_number().
+/// What one source read at one time. `source` is a number from Timeline::source_number().
 struct Reading {
   engine::TimeNs time_ns = 0;
   rig::Signal signal;
-  double value = 0.0;
+  Values values;  ///< one for each part of the channel; an input has one
   engine::Quality quality = engine::Quality::kGood;
   std::uint32_t source = 0;
   std::uint64_t sequence = 0;  ///< rises within a source
@@ -33,10 +34,11 @@ enum class Outcome : std::uint8_t {
   kSameMeasurement,
   kOutOfRange,
   kNotUsable,
-  kInput,      ///< taken as an input's value
-  kDuplicate,  ///< (source, sequence) was taken before; quietly ignored
-  kNotFinite,  ///< refused
-  kTooOld,     ///< refused: older than what has been fused (until the timeline can rewind)
+  kInput,       ///< taken as an input's value
+  kDuplicate,   ///< (source, sequence) was taken before; quietly ignored
+  kNotFinite,   ///< refused
+  kTooOld,      ///< refused: older than what has been fused (until the timeline can rewind)
+  kWrongParts,  ///< refused: not one value for each part of the channel
 };
 
 class Timeline {
@@ -62,6 +64,8 @@ class Timeline {
   [[nodiscard]] engine::TimeNs clock() const;
   [[nodiscard]] bool started() const;
   [[nodiscard]] const rig::Rig& rig() const;
+  /// By channel, the source of its last reading that was taken; −1: none yet.
+  [[nodiscard]] std::span<const int> last_sources() const { return last_sources_; }
   [[nodiscard]] const engine::Engine& engine() const;
 
  private:
@@ -76,6 +80,7 @@ class Timeline {
   };
   [[nodiscard]] bool before(const Item& a, const Item& b) const;
   [[nodiscard]] engine::TimeNs moment_of(const Reading& reading) const;
+  [[nodiscard]] std::size_t parts_of(const rig::Signal& signal) const;
   Outcome take(const Item& item);
   Outcome take_channel(const Item& item);
 
@@ -83,6 +88,7 @@ class Timeline {
   engine::Engine engine_;
   std::vector<int> rank_;  ///< of each channel's name in bytewise order
   std::vector<Source> sources_;
+  std::vector<int> last_sources_;
   std::vector<Item> items_;  ///< scratch of run()
   bool started_ = false;
   engine::TimeNs clock_ns_ = 0;

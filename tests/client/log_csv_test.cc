@@ -1,6 +1,6 @@
 // SPDX-License-Identifier: Apache-2.0
 // Logs, right and wrong: what is read, what is refused and with which words. The rig of these tests has the
-// channels sonic and radar and the input pump.
+// channels sonic, radar and fix (of three parts) and the input pump.
 #include "lib/log/log_csv.h"
 
 #include <gtest/gtest.h>
@@ -14,10 +14,11 @@
 namespace steelyard::client {
 namespace {
 
-std::optional<rig::Signal> find_signal(std::string_view name) {
-  if (name == "sonic") return rig::Signal{false, 0};
-  if (name == "radar") return rig::Signal{false, 1};
-  if (name == "pump") return rig::Signal{true, 0};
+std::optional<Named> find_signal(std::string_view name) {
+  if (name == "sonic") return Named{{false, 0}, 1};
+  if (name == "radar") return Named{{false, 1}, 1};
+  if (name == "fix") return Named{{false, 2}, 3};
+  if (name == "pump") return Named{{true, 0}, 1};
   return std::nullopt;
 }
 
@@ -31,8 +32,12 @@ struct Read {
 std::string describe(const LogReading& reading) {
   static const char* const kQualities[] = {"good", "uncertain", "bad", "out_of_service", "simulated"};
   std::string text = time_text(reading.time_ns, TimeStyle::kSeconds);
-  text += reading.signal.is_input ? " pump " : reading.signal.index == 0 ? " sonic " : " radar ";
-  append_number(text, reading.value);
+  static const char* const kChannels[] = {" sonic", " radar", " fix"};
+  text += reading.signal.is_input ? " pump" : kChannels[reading.signal.index];
+  for (const double value : reading.values.all()) {
+    text += ' ';
+    append_number(text, value);
+  }
   return text + " " + kQualities[static_cast<int>(reading.quality)];
 }
 
@@ -94,6 +99,24 @@ const std::vector<Case> kCases = {
     {"time backwards", kLong + "5,sonic,2\n3,sonic,3\n", {"5 sonic 2 good", "3 sonic 3 good"}, {}},
     {"RFC 3339", kLong + "1970-01-01T01:00:01.5+01:00,sonic,2\n", {"1.5 sonic 2 good"}, {}},
 
+    // right: vector channels
+    {"long, parts in columns of any order",
+     "value3,time,value,channel,value2\n30,1,10,fix,20\n,2,5,sonic,\n",
+     {"1 fix 10 20 30 good", "2 sonic 5 good"},
+     {}},
+    {"long, a bad vector reading needs no values",
+     "time,channel,value,value2,value3,quality\n1,fix,,,,bad\n2,fix,1,2,3,bad\n",
+     {"1 fix 0 0 0 bad", "2 fix 1 2 3 bad"},
+     {}},
+    {"long, a bad vector reading needs no columns either",
+     "time,channel,value,quality\n1,fix,,bad\n",
+     {"1 fix 0 0 0 bad"},
+     {}},
+    {"wide, parts",
+     "time,fix.2,sonic,fix.quality,fix.1,fix.3\n1,20,5,,10,30\n2,,6,,,\n3,2,,uncertain,1,3\n",
+     {"1 fix 10 20 30 good", "1 sonic 5 good", "2 sonic 6 good", "3 fix 1 2 3 uncertain"},
+     {}},
+
     // fatal: the header
     {"empty file",
      "",
@@ -121,10 +144,41 @@ const std::vector<Case> kCases = {
      {},
      {"log.csv:1:1: header: has no column \"channel\"; a long log must have time, channel and value"},
      false},
+    {"long, a value column is missing between others",
+     "time,channel,value3,value\n",
+     {},
+     {"log.csv:1:14: header: has the column \"value3\" but no column \"value2\""},
+     false},
+    {"wide, a part is missing",
+     "time,sonic,fix.3,fix.1\n1,2,3,4\n",
+     {},
+     {"log.csv:1:12: header: has no column \"fix.2\"; a log of fix must have all its 3 parts"},
+     false},
+    {"wide, a part too many",
+     "time,fix.1,fix.2,fix.3,fix.4\n",
+     {},
+     {"log.csv:1:24: header: has the column \"fix.4\"; the channel has 3 parts"},
+     false},
+    {"wide, a vector channel as one column",
+     "time,fix\n",
+     {},
+     {"log.csv:1:6: header: has the column \"fix\"; the channel has 3 parts, \"fix.1\" …"},
+     false},
+    {"wide, names that are no parts",
+     "time,fix.0,fix.01,fix.x,fix.,sonic.1,.1\n",
+     {},
+     {"log.csv:1:6: header: has the column \"fix.0\"; the rig has no such channel or input",
+      "log.csv:1:12: header: has the column \"fix.01\"; the rig has no such channel or input",
+      "log.csv:1:19: header: has the column \"fix.x\"; the rig has no such channel or input",
+      "log.csv:1:25: header: has the column \"fix.\"; the rig has no such channel or input",
+      "log.csv:1:30: header: has the column \"sonic.1\"; the rig has no such channel or input",
+      "log.csv:1:38: header: has the column \".1\"; the rig has no such channel or input"},
+     false},
     {"long, unknown column",
      "time,channel,value,note\n",
      {},
-     {"log.csv:1:20: header: has the column \"note\"; a long log has time, channel, value and quality"},
+     {"log.csv:1:20: header: has the column \"note\"; a long log has time, channel, value, value2 … and "
+      "quality"},
      false},
     {"long, column twice",
      "time,channel,value,value\n",
@@ -226,6 +280,33 @@ const std::vector<Case> kCases = {
      {"2 sonic 3 good"},
      {"log.csv:2:1: row: has 4 cells; must have 3 like the header"}},
 
+    // vector readings with a part that is wrong or missing
+    {"long, a part is missing",
+     "time,channel,value,value2,value3\n1,fix,10,,30\n2,fix,1,2,3\n",
+     {"2 fix 1 2 3 good"},
+     {"log.csv:2:10: fix.2: is empty; must be a number"}},
+    {"long, a part is wrong",
+     "time,channel,value,value2,value3\n1,fix,10,nan,30\n2,fix,1,2,x\n3,sonic,4,,\n",
+     {"3 sonic 4 good"},
+     {"log.csv:2:10: fix.2: is \"nan\"; must be finite", "log.csv:3:11: fix.3: is \"x\"; must be a number"}},
+    {"long, a bad reading with some parts",
+     "time,channel,value,value2,value3,quality\n1,fix,10,,30,bad\n",
+     {},
+     {"log.csv:2:10: fix.2: is empty; must be a number"}},
+    {"long, columns are missing",
+     "time,channel,value,value2\n1,fix,10,20\n2,sonic,3,\n",
+     {"2 sonic 3 good"},
+     {"log.csv:2:3: fix: has 3 parts; the log has no column \"value3\""}},
+    {"long, a value too many",
+     "time,channel,value,value2,value3,value4\n1,sonic,10,20,,\n2,fix,1,2,3,4\n3,fix,1,2,3,\n",
+     {"3 fix 1 2 3 good"},
+     {"log.csv:2:12: sonic: value2 is \"20\"; must be empty for a channel of 1 part",
+      "log.csv:3:13: fix: value4 is \"4\"; must be empty for a channel of 3 parts"}},
+    {"wide, a part is missing or wrong",
+     "time,fix.1,fix.2,fix.3,sonic\n1,10,,30,4\n2,a,2,3,5\n3,1,2,3,6\n",
+     {"1 sonic 4 good", "2 sonic 5 good", "3 fix 1 2 3 good", "3 sonic 6 good"},
+     {"log.csv:2:6: fix.2: is empty; must be a number", "log.csv:3:3: fix.1: is \"a\"; must be a number"}},
+
     // wrong quoting
     {"text behind a closing quote",
      kLong + "1,\"sonic\"x,2\n2,sonic,3\n",
@@ -318,7 +399,9 @@ TEST(LogReader, SurvivesAnyBytes) {
   const std::string alphabet = "0123456789.,,,\"\"\n\n\r-eE sonicradr\xEF\xBB\xBF\xC3\xA4";
   for (unsigned seed = 1; seed <= 2000; ++seed) {
     SCOPED_TRACE("seed " + std::to_string(seed));
-    std::string text = seed % 2 == 0 ? kLong : std::string("time,sonic,radar\n");
+    static const std::string kHeaders[] = {kLong, "time,sonic,radar\n", "time,channel,value,value2,value3\n",
+                                           "time,fix.1,fix.2,fix.3\n"};
+    std::string text = kHeaders[seed % 4];
     unsigned state = seed * 2654435761U;
     for (int i = 0; i < 300; ++i) {
       state = state * 1664525U + 1013904223U;

@@ -5,6 +5,7 @@
 #include <algorithm>
 #include <chrono>
 #include <string>
+#include <vector>
 
 #include "cli/batches.h"
 #include "cli/bridge.h"
@@ -64,6 +65,35 @@ TEST(BatchMaker, WritesColumns) {
       "channel: 3 channel: 4 value: 1.5 value: 2.5 value: 3.5 quality_row: 1 quality_row: 2 quality: BAD "
       "quality: UNCERTAIN");
   EXPECT_EQ(maker.rows(), 0U);
+}
+
+TEST(BatchMaker, PutsFurtherPartsInAColumnOfTheirOwn) {
+  BatchMaker maker(0);
+  timeline::Values fix(1.5);
+  fix.add(2.5);
+  fix.add(3.5);
+  maker.add({1000, {false, 1}, fix, engine::Quality::kGood, 0, 1});
+  maker.add({1000, {false, 0}, 9.0, engine::Quality::kGood, 0, 2});
+  maker.add({1000, {false, 1}, fix, engine::Quality::kGood, 0, 3});
+  EXPECT_EQ(maker.values(), 7U);
+  const v1::Batch batch = maker.take();
+  EXPECT_EQ(std::vector<double>(batch.value().begin(), batch.value().end()),
+            (std::vector<double>{1.5, 9.0, 1.5}));
+  EXPECT_EQ(std::vector<double>(batch.more_values().begin(), batch.more_values().end()),
+            (std::vector<double>{2.5, 3.5, 2.5, 3.5}));
+}
+
+// gRPC takes no message above 4 MiB.
+TEST(BatchMaker, IsFullWithManyParts) {
+  BatchMaker maker(0);
+  timeline::Reading next = reading(5, 0);
+  next.values = timeline::Values(std::vector<double>(timeline::Values::kMost, 1.0));
+  while (!maker.full_before(next, false)) {
+    ++next.sequence;
+    maker.add(next);
+  }
+  EXPECT_GT(maker.rows(), BatchMaker::kUsualRows);
+  EXPECT_LE(maker.take().ByteSizeLong(), 4U << 20U);
 }
 
 TEST(BatchMaker, KeepsTheReadingsOfOneTimeTogether) {

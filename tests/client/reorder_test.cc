@@ -77,12 +77,64 @@ TEST(Reorder, KeepsTheOrderOfArrivalWithinOneTime) {
   Reorder reorder(make_rig(10, 0));
   for (int i = 0; i < 20; ++i) {
     LogReading reading = at(1);
-    reading.value = i;
+    reading.values = i;
     ASSERT_TRUE(reorder.add(reading));
   }
   std::vector<timeline::Reading> out;
   reorder.release_rest(out);
-  for (int i = 0; i < 20; ++i) EXPECT_EQ(out[static_cast<std::size_t>(i)].value, i);
+  for (int i = 0; i < 20; ++i) {
+    EXPECT_EQ(out[static_cast<std::size_t>(i)].values.first(), i);
+  }
+}
+
+TEST(Reorder, ValuesOfAllPartsStayTogether) {
+  rig::Rig rig = make_rig(3, 0);
+  auto model = std::make_shared<engine::Model>(*rig.model);
+  model->channels[1].others.resize(2);
+  rig.model = model;
+  Reorder reorder(rig);
+  std::vector<timeline::Reading> out;
+  for (int i = 0; i < 40; ++i) {  // slots are used again meanwhile
+    LogReading reading = at((i * 7) % 3 + i, i % 2);
+    reading.values = static_cast<double>(reading.time_ns / kS);
+    if (i % 2 == 1) {
+      reading.values.add(static_cast<double>(i));
+      reading.values.add(static_cast<double>(-i));
+    }
+    ASSERT_TRUE(reorder.add(reading)) << i;
+    reorder.release(out);
+  }
+  reorder.release_rest(out);
+  ASSERT_EQ(out.size(), 40U);
+  for (const timeline::Reading& reading : out) {
+    const auto all = reading.values.all();
+    ASSERT_EQ(all.size(), reading.signal.index == 1 ? 3U : 1U);
+    EXPECT_EQ(all[0], static_cast<double>(reading.time_ns / kS));
+    if (all.size() == 3) {
+      EXPECT_EQ(all[1], -all[2]);
+    }
+  }
+}
+
+// A log that ends, or leaps ahead, gives what waits in pieces, whole times only.
+TEST(Reorder, GivesMuchInPiecesOfWholeTimes) {
+  constexpr auto kReadings = static_cast<int>(Reorder::kMostAtOnce) + 1000;
+  for (const bool leap : {false, true}) {
+    Reorder reorder(make_rig(1e6, 0));
+    for (int i = 0; i < kReadings; ++i) ASSERT_TRUE(reorder.add(at(i / 10)));
+    if (leap) {
+      ASSERT_TRUE(reorder.add(at(100'000'000)));
+    }
+    std::vector<timeline::Reading> first;
+    std::vector<timeline::Reading> second;
+    leap ? reorder.release(first) : reorder.release_rest(first);
+    leap ? reorder.release(second) : reorder.release_rest(second);
+    EXPECT_GE(first.size(), Reorder::kMostAtOnce);
+    EXPECT_LT(first.size(), Reorder::kMostAtOnce + 10);
+    EXPECT_EQ(first.size() + second.size(), static_cast<std::size_t>(kReadings));
+    EXPECT_LT(first.back().time_ns, second.front().time_ns);
+    EXPECT_EQ(second.back().sequence, static_cast<std::uint64_t>(kReadings));
+  }
 }
 
 TEST(Reorder, MemoryIsBounded) {

@@ -11,10 +11,12 @@
 
 namespace {
 
-std::optional<steelyard::rig::Signal> find(std::string_view name) {
-  if (name == "a") return steelyard::rig::Signal{false, 0};
-  if (name == "b.1" || name == "b") return steelyard::rig::Signal{false, 1};
-  if (name == "u") return steelyard::rig::Signal{true, 0};
+using steelyard::client::Named;
+
+std::optional<Named> find(std::string_view name) {
+  if (name == "a") return Named{{false, 0}, 1};
+  if (name == "b") return Named{{false, 1}, 2};
+  if (name == "u") return Named{{true, 0}, 1};
   return std::nullopt;
 }
 
@@ -33,7 +35,11 @@ extern "C" int LLVMFuzzerTestOneInput(const std::uint8_t* data, std::size_t size
   }
   steelyard::client::LogRow row;
   while (log.next(row))
-    for (const auto& reading : row.readings)
-      if (!std::isfinite(reading.value) && reading.quality == steelyard::engine::Quality::kGood) std::abort();
+    for (const auto& reading : row.readings) {
+      const std::size_t parts = !reading.signal.is_input && reading.signal.index == 1 ? 2 : 1;
+      if (reading.values.size() != parts) std::abort();
+      for (const double value : reading.values.all())
+        if (!std::isfinite(value) && reading.quality == steelyard::engine::Quality::kGood) std::abort();
+    }
   return 0;
 }

@@ -95,18 +95,24 @@ TEST(Json, ExamplesPassThroughTheMessage) {
   }
 }
 
-TEST(Json, KeysThatAreRefusedPassThroughTheMessageToo) {
-  const std::string text =
-      basin_with("reads: level, sd: 0.004, range: [0, 6]",
-                 "reads: [level, inflow], sd: [1, 0.1*level], range: [[0, 6], [0, 1]], correlation: 0.5, "
-                 "time_sd: 5 ms, on_change: {deadband: 1, heartbeat: 1 min}") +
-      "common: [{channels: [sonic, meter], share: 0.1}]\n";
-  std::string fields;
-  for (const Problem& problem : load(text, "text").problems) fields += problem.field + " ";
-  EXPECT_EQ(fields,
-            "channels.sonic.reads channels.sonic.correlation channels.sonic.time_sd channels.sonic.on_change "
-            "common ");
-  EXPECT_EQ(load(through_the_message(to_json(text)), "json").problems.size(), 5U);
+// Those of vector channels, of noise and time, and of common causes.
+TEST(Json, EveryFormOfAKeyPassesThroughTheMessage) {
+  const std::string text = R"yaml(rig: forms
+response: 60 s
+states:
+  inflow: {unit: m3/s, start: 0.1, start_sd: 0.2}
+  level:  {unit: m, start: -2, start_sd: 2}
+freeze_share: 0.25
+common: [{channels: [meter, sonic], share: 0.1}, {channels: [both, meter, sonic], share: 0.05}]
+channels:
+  both:  {reads: [level, 2*inflow, level], sd: [1, 0.1*abs(level), 2], range: [[0, 6], [0, 1], [-1, 1]],
+          resolution: [0.1, 0.2, 0], bias_sd: 0.5, offset_size: [1, 2, 3], correlation: [0.5, -0.2, 0],
+          time_sd: 5 ms, unit: m}
+  meter: {reads: inflow, sd: 1, range: [0, 1], period: 1 s, correlation: 0.5, offset_size: 2}
+  sonic: {reads: level, sd: 1, range: [0, 6], on_change: {deadband: 0.5, heartbeat: 1 min}}
+)yaml";
+  expect_same_rig(to_json(text), text);
+  expect_same_rig(through_the_message(to_json(text)), text);
 }
 
 }  // namespace

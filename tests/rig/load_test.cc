@@ -80,6 +80,111 @@ TEST(Load, ChannelsArrive) {
   EXPECT_FALSE(meter.live_zero);
 }
 
+// kBasin's sonic turned into a vector channel of level and inflow, with `more` keys.
+std::string vector_basin(std::string_view more) {
+  return basin_with(
+      "reads: level, sd: 0.004, range: [0, 6], resolution: 0.001",
+      "reads: [level, 2*inflow], sd: [0.004, 0.1 + level], range: [[0, 6], [-1, 2]]" + std::string(more));
+}
+
+TEST(Load, VectorChannelsArrivePartByPart) {
+  const auto rig = loaded(vector_basin(
+      ", bias_sd: [1, 2], resolution: [0.1, 0.2], offset_size: [3, 4], correlation: [-0.5], unit: m"));
+  ASSERT_TRUE(rig);
+  const engine::ChannelModel& sonic = rig->model->channels[0];
+  ASSERT_EQ(sonic.parts(), 2);
+  EXPECT_EQ(sonic.sd, 0.004);
+  ASSERT_TRUE(sonic.part(1).sd_formula);
+  EXPECT_DOUBLE_EQ(sonic.part(1).sd, 2.1);  // at the start
+  EXPECT_EQ(value_of(sonic.part(1).reads, {2, 0.5}, {0}), 1.0);
+  EXPECT_EQ(sonic.part(1).lo, -1.0);
+  EXPECT_EQ(sonic.part(1).hi, 2.0);
+  EXPECT_EQ(sonic.bias_sd, 1.0);
+  EXPECT_EQ(sonic.part(1).bias_sd, 2.0);
+  EXPECT_EQ(sonic.part(1).resolution, 0.2);
+  EXPECT_EQ(sonic.part(1).offset_size, 4.0);
+  EXPECT_EQ(sonic.part(1).unit, "m");
+  EXPECT_EQ(sonic.part_correlation, std::vector<double>{-0.5});
+  EXPECT_EQ(rig->reading_is_affine, (std::vector<bool>{true, true}));
+}
+
+TEST(Load, PartsHaveDefaultsOfTheirOwnAndMayShareANumber) {
+  const auto rig = loaded(vector_basin(", bias_sd: 0.25"));
+  ASSERT_TRUE(rig);
+  const engine::ChannelModel& sonic = rig->model->channels[0];
+  EXPECT_DOUBLE_EQ(sonic.offset_size, 0.6);
+  EXPECT_DOUBLE_EQ(sonic.part(1).offset_size, 0.3);
+  EXPECT_EQ(sonic.unit, "m");
+  EXPECT_EQ(sonic.part(1).unit, "");
+  EXPECT_EQ(sonic.bias_sd, 0.25);
+  EXPECT_EQ(sonic.part(1).bias_sd, 0.25);
+  EXPECT_EQ(sonic.part(1).resolution, 0.0);
+  EXPECT_TRUE(sonic.part_correlation.empty());
+  const auto curved = loaded(basin_with("reads: level, sd: 0.004, range: [0, 6], resolution: 0.001",
+                                        "reads: [level, level^2], sd: [1, 1], range: [[0, 6], [0, 9]]"));
+  ASSERT_TRUE(curved);
+  EXPECT_FALSE(curved->reading_is_affine[0]);
+}
+
+TEST(Load, AListOfOneIsAScalarChannel) {
+  const auto rig = loaded(basin_with("reads: level, sd: 0.004, range: [0, 6], resolution: 0.001",
+                                     "reads: [level], sd: [0.5], range: [[0, 6]], modulo: 6"));
+  ASSERT_TRUE(rig);
+  EXPECT_EQ(rig->model->channels[0].parts(), 1);
+  EXPECT_EQ(rig->model->channels[0].sd, 0.5);
+  EXPECT_EQ(rig->model->channels[0].modulo, 6.0);
+}
+
+TEST(Load, NoiseTimeAndCommonCausesArrive) {
+  const auto rig = loaded(basin_with("resolution: 0.001}",
+                                     "period: 1 s, correlation: 0.8, time_sd: 5 ms,\n"
+                                     "    on_change: {deadband: 0.02, heartbeat: 1 min}}") +
+                          "common: [{channels: [meter, sonic], share: 0.2}]\nfreeze_share: 0\n");
+  ASSERT_TRUE(rig);
+  const engine::ChannelModel& sonic = rig->model->channels[0];
+  EXPECT_EQ(sonic.correlation, 0.8);
+  EXPECT_DOUBLE_EQ(sonic.time_sd_s, 0.005);
+  ASSERT_TRUE(sonic.on_change);
+  EXPECT_EQ(sonic.on_change->deadband, 0.02);
+  EXPECT_EQ(sonic.on_change->heartbeat_s, 60.0);
+  ASSERT_EQ(rig->model->common.size(), 1U);
+  EXPECT_EQ(rig->model->common[0].channels, (std::vector<int>{1, 0}));
+  EXPECT_EQ(rig->model->common[0].share, 0.2);
+  EXPECT_EQ(rig->model->freeze_share, 0.0);
+  const auto plain = loaded(kBasin);
+  ASSERT_TRUE(plain);
+  EXPECT_EQ(plain->model->freeze_share, 0.1);
+  EXPECT_TRUE(plain->model->common.empty());
+  EXPECT_FALSE(plain->model->channels[0].on_change);
+}
+
+// 32 parts of all channels together: 2 of 16 pass, one more part is one too many.
+TEST(Load, PartsAreCountedOverAllChannels) {
+  const auto rig_of = [](int parts_of_second) {
+    std::string text = "rig: many\nresponse: 1 s\nstates: {x: {unit: m, start: 0, start_sd: 1}}\nchannels:\n";
+    for (const int parts : {16, parts_of_second}) {
+      std::string reads;
+      std::string sds;
+      std::string ranges;
+      for (int i = 0; i < parts; ++i) {
+        const std::string comma = i == 0 ? "" : ", ";
+        reads += comma + "x";
+        sds += comma + "1";
+        ranges += comma + "[0, 1]";
+      }
+      const bool first = text.ends_with("channels:\n");
+      text += std::string("  ") + (first ? "a" : "c") + std::to_string(parts) + ": {reads: [" + reads +
+              "], sd: [" + sds + "], range: [" + ranges + "]}\n";
+    }
+    return text;
+  };
+  EXPECT_TRUE(loaded(rig_of(16)));
+  EXPECT_EQ(problems_of(rig_of(17)),
+            "basin.yaml:6:3: channels.c17: makes 33 parts in all channels; at most 32 are possible\n");
+  EXPECT_EQ(problems_of(rig_of(33)),
+            "basin.yaml:6:16: channels.c33.reads: has 33 parts; at most 32 are possible\n");
+}
+
 TEST(Load, DefaultsFollowTheResponseTime) {
   const auto rig = loaded(kBasin);
   ASSERT_TRUE(rig);

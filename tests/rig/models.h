@@ -60,20 +60,8 @@ inline void expect_equal(const engine::InputModel& a, const engine::InputModel& 
   EXPECT_EQ(a.hi, b.hi);
 }
 
-inline void expect_equal_rates(const engine::ChannelModel& a, const engine::ChannelModel& b) {
-  EXPECT_EQ(a.fails_every_s, b.fails_every_s);
-  EXPECT_EQ(a.recovers_in_s, b.recovers_in_s);
-  EXPECT_EQ(a.changes_in_s, b.changes_in_s);
-  EXPECT_EQ(a.memory_s, b.memory_s);
-  EXPECT_EQ(a.strays, b.strays);
-  EXPECT_EQ(a.offset_size, b.offset_size);
-  EXPECT_EQ(a.prior_readings, b.prior_readings);
-}
-
-inline void expect_equal(const engine::ChannelModel& a, const engine::ChannelModel& b,
-                         const engine::Model& model) {
-  SCOPED_TRACE(a.name);
-  EXPECT_EQ(a.name, b.name);
+inline void expect_equal_part(const engine::PartModel& a, const engine::PartModel& b,
+                              const engine::Model& model) {
   EXPECT_EQ(a.unit, b.unit);
   EXPECT_EQ(a.sd, b.sd);
   ASSERT_EQ(a.sd_formula == nullptr, b.sd_formula == nullptr);
@@ -82,13 +70,39 @@ inline void expect_equal(const engine::ChannelModel& a, const engine::ChannelMod
   EXPECT_EQ(a.lo, b.lo);
   EXPECT_EQ(a.hi, b.hi);
   EXPECT_EQ(a.resolution, b.resolution);
+  EXPECT_EQ(a.offset_size, b.offset_size);
+  expect_equal(a.reads, b.reads, model);
+}
+
+inline void expect_equal_rates(const engine::ChannelModel& a, const engine::ChannelModel& b) {
+  EXPECT_EQ(a.fails_every_s, b.fails_every_s);
+  EXPECT_EQ(a.recovers_in_s, b.recovers_in_s);
+  EXPECT_EQ(a.changes_in_s, b.changes_in_s);
+  EXPECT_EQ(a.memory_s, b.memory_s);
+  EXPECT_EQ(a.strays, b.strays);
+  EXPECT_EQ(a.prior_readings, b.prior_readings);
+}
+
+inline void expect_equal(const engine::ChannelModel& a, const engine::ChannelModel& b,
+                         const engine::Model& model) {
+  SCOPED_TRACE(a.name);
+  EXPECT_EQ(a.name, b.name);
+  ASSERT_EQ(a.parts(), b.parts());
+  for (int i = 0; i < a.parts(); ++i) expect_equal_part(a.part(i), b.part(i), model);
+  EXPECT_EQ(a.part_correlation, b.part_correlation);
+  EXPECT_EQ(a.correlation, b.correlation);
+  EXPECT_EQ(a.time_sd_s, b.time_sd_s);
+  ASSERT_EQ(a.on_change.has_value(), b.on_change.has_value());
+  if (a.on_change) {
+    EXPECT_EQ(a.on_change->deadband, b.on_change->deadband);
+    EXPECT_EQ(a.on_change->heartbeat_s, b.on_change->heartbeat_s);
+  }
   EXPECT_EQ(a.cutoff, b.cutoff);
   EXPECT_EQ(a.modulo, b.modulo);
   EXPECT_EQ(a.period_s, b.period_s);
   EXPECT_EQ(a.delay_s, b.delay_s);
   EXPECT_EQ(a.live_zero, b.live_zero);
   expect_equal_rates(a, b);
-  expect_equal(a.reads, b.reads, model);
 }
 
 inline void expect_equal(const engine::ModeModel& a, const engine::ModeModel& b) {
@@ -109,6 +123,12 @@ inline void expect_equal(const engine::Model& a, const engine::Model& b) {
   for (std::size_t i = 0; i < a.states.size(); ++i) expect_equal(a.states[i], b.states[i], a);
   for (std::size_t i = 0; i < a.inputs.size(); ++i) expect_equal(a.inputs[i], b.inputs[i]);
   for (std::size_t i = 0; i < a.channels.size(); ++i) expect_equal(a.channels[i], b.channels[i], a);
+  EXPECT_EQ(a.freeze_share, b.freeze_share);
+  ASSERT_EQ(a.common.size(), b.common.size());
+  for (std::size_t i = 0; i < a.common.size(); ++i) {
+    EXPECT_EQ(a.common[i].channels, b.common[i].channels);
+    EXPECT_EQ(a.common[i].share, b.common[i].share);
+  }
 }
 
 }  // namespace steelyard::rig

@@ -47,7 +47,7 @@ constexpr Row kRows[] = {
      "2:1: responce: is not a known key; did you mean response?\n"},
     {"response: 60 s", "response: 60 s\nversion: 2",
      "3:1: version: is not a known key; known are rig, response, horizon, lag, constants, states, "
-     "inputs, motion, unrest, jolts, still, common, channels\n"},
+     "inputs, motion, unrest, jolts, still, common, freeze_share, channels\n"},
     {"response: 60 s", "response: 60 s\nresponse: 61 s",
      "3:1: response: is given twice; first in line 2\n"},
     // constants and states
@@ -228,7 +228,7 @@ constexpr Row kRows[] = {
      "14:60: channels.sonic.time_sd: is 5; must be a duration with its unit (ms, s, min, h, d), such as "
      "60 s\n"},
     {"resolution: 0.001", "correlation: 1",
-     "14:64: channels.sonic.correlation: is 1; must be greater than -1 and less than 1\n"},
+     "14:64: channels.sonic.correlation: is 1; must be at least 0 and less than 1\n"},
     {"resolution: 0.001", "on_change: {deadbnd: 1}",
      "14:51: channels.sonic.on_change.deadband: is missing\n"
      "14:63: channels.sonic.on_change.deadbnd: is not a known key; did you mean deadband?\n"},
@@ -247,22 +247,73 @@ constexpr Row kRows[] = {
     {"  meter:", "  \"\":",
      "15:3: channels.\"\": is not a name; a name is a small letter, then small letters, digits and _, "
      "at most 63 characters\n"},
-    // right, and not there yet
-    {"reads: level, sd: 0.004, range: [0, 6]", "reads: [level, inflow], sd: [1, 1], range: [[0, 6], [0, "
-     "1]]",
-     "14:18: channels.sonic.reads: is a list; vector channels are not supported yet, make each part a "
-     "channel\n"},
+    // vector channels
     {"reads: level, sd: 0.004, range: [0, 6]", "reads: [level, inflow], sd: 1, range: [[0, 6], [1, 0]]",
      "14:39: channels.sonic.sd: is 1; must be a list of 2, one for each part of reads\n"
-     "14:58: channels.sonic.range: is [1, 0]; its low end must be below its high end\n"},
-    {"resolution: 0.001", "time_sd: 5 ms",
-     "14:51: channels.sonic.time_sd: is not supported yet; remove it\n"},
+     "14:58: channels.sonic.range[2]: is [1, 0]; its low end must be below its high end\n"},
+    {"reads: level, sd: 0.004, range: [0, 6]", "reads: [level, inflw], sd: [1, 0], range: [[0, 6], [0, 1]]",
+     "14:26: channels.sonic.reads[2]: position 1: inflw is not a state, input, constant or function; did you "
+     "mean inflow?\n"
+     "14:42: channels.sonic.sd[2]: is 0; must be greater than 0\n"},
+    {"reads: level, sd: 0.004, range: [0, 6]", "reads: [level, inflow], sd: [1, 1, 1], range: [0, 6]",
+     "14:39: channels.sonic.sd: is a list of 3; must be a list of 2, one for each part of reads\n"
+     "14:58: channels.sonic.range[1]: is 0; must be a list of two numbers, [low, high]\n"
+     "14:61: channels.sonic.range[2]: is 6; must be a list of two numbers, [low, high]\n"},
+    {"reads: level, sd: 0.004, range: [0, 6], resolution: 0.001",
+     "reads: [level, inflow], sd: [1, 1], range: [[0, 6], [0, 1]], resolution: [0.1, 2], bias_sd: -1, "
+     "offset_size: [1, 0]",
+     "14:90: channels.sonic.resolution[2]: is 2; must be less than the width of the range\n"
+     "14:103: channels.sonic.bias_sd: is -1; must be at least 0\n"
+     "14:124: channels.sonic.offset_size[2]: is 0; must be greater than 0\n"},
+    {"reads: level, sd: 0.004, range: [0, 6], resolution: 0.001",
+     "reads: [level, inflow], sd: [1, 1], range: [[0, 6], [0, 1]], resolution: 2, bias_sd: [1]",
+     "14:84: channels.sonic.resolution: is 2; must be less than the width of the range\n"
+     "14:96: channels.sonic.bias_sd: is a list of 1; must be a list of 2, one for each part of reads\n"},
+    {"reads: level, sd: 0.004, range: [0, 6], resolution: 0.001",
+     "reads: [level, inflow], sd: [1, 1], range: [[0, 6], [0, 1]], modulo: 2, cutoff: 1, signal: 4-20 mA, "
+     "on_change: {deadband: 1}",
+     "14:72: channels.sonic.modulo: is given for a channel of 2 parts; must be left out there\n"
+     "14:83: channels.sonic.cutoff: is given for a channel of 2 parts; must be left out there\n"
+     "14:94: channels.sonic.signal: is given for a channel of 2 parts; must be left out there\n"
+     "14:111: channels.sonic.on_change: is given for a channel of 2 parts; must be left out there\n"},
+    {"reads: level, sd: 0.004, range: [0, 6], resolution: 0.001",
+     "reads: [level, inflow, level], sd: [1, 1, 1], range: [[0, 6], [0, 1], [0, 6]], correlation: 0.5",
+     "14:103: channels.sonic.correlation: is 0.5; must be a list of 3, one for each pair of parts, (1,2), "
+     "(1,3) … (2,3) …\n"},
+    {"reads: level, sd: 0.004, range: [0, 6], resolution: 0.001",
+     "reads: [level, inflow, level], sd: [1, 1, 1], range: [[0, 6], [0, 1], [0, 6]], correlation: [0.1, 1, x]",
+     "14:109: channels.sonic.correlation[2]: is 1; must be greater than -1 and less than 1\n"
+     "14:112: channels.sonic.correlation[3]: is x; must be a number, greater than -1 and less than 1\n"},
+    {"reads: level, sd: 0.004, range: [0, 6], resolution: 0.001",
+     "reads: [level, inflow, level], sd: [1, 1, 1], range: [[0, 6], [0, 1], [0, 6]], correlation: [0.9, 0.9, "
+     "-0.9]",
+     "14:103: channels.sonic.correlation: gives the parts correlations that no noise can have; their matrix "
+     "must be positive definite\n"},
+    // noise and time
     {"resolution: 0.001", "correlation: 0.5",
-     "14:51: channels.sonic.correlation: is not supported yet; remove it\n"},
-    {"resolution: 0.001", "on_change: {deadband: 1, heartbeat: 1 min}",
-     "14:51: channels.sonic.on_change: is not supported yet; remove it\n"},
-    {"channels:", "common: [{channels: [sonic, meter], share: 0.1}]\nchannels:",
-     "13:1: common: is not supported yet; remove it\n"},
+     "14:64: channels.sonic.correlation: is 0.5; must be 0 without a period: it is between readings one "
+     "period apart\n"},
+    {"resolution: 0.001", "period: 1 s, correlation: -0.1",
+     "14:77: channels.sonic.correlation: is -0.1; must be at least 0 and less than 1\n"},
+    {"resolution: 0.001", "correlation: [0.5]",
+     "14:64: channels.sonic.correlation: is a list; must be a number, at least 0 and less than 1\n"},
+    {"resolution: 0.001", "time_sd: -5 ms",
+     "14:60: channels.sonic.time_sd: is -5 ms; must be 0 or longer\n"},
+    {"resolution: 0.001", "on_change: {deadband: 0, heartbeat: 0 s}",
+     "14:73: channels.sonic.on_change.deadband: is 0; must be greater than 0\n"
+     "14:87: channels.sonic.on_change.heartbeat: is 0 s; must be longer than 0\n"},
+    {"resolution: 0.001", "on_change: {deadband: 6}",
+     "14:73: channels.sonic.on_change.deadband: is 6; must be less than the width of the range\n"},
+    {"resolution: 0.001", "on_change: 0.1",
+     "14:62: channels.sonic.on_change: is 0.1; must be a map with the keys deadband, heartbeat\n"
+     },
+    // common causes
+    {"channels:", "freeze_share: 1.1\nchannels:",
+     "13:15: freeze_share: is 1.1; must be at least 0 and at most 1\n"},
+    {"channels:", "common: [{channels: [sonic, meter], share: 0.6}, {channels: [meter, sonic], share: 0.5}]\n"
+     "channels:",
+     "13:9: common: gives sonic shares that add up to 1.1; must be at most 1\n"
+     "13:9: common: gives meter shares that add up to 1.1; must be at most 1\n"},
     {"channels:", "common: [{channels: [sonic, metre], share: 1}]\nchannels:",
      "13:29: common[1].channels: metre is not a channel; did you mean meter?\n"
      "13:44: common[1].share: is 1; must be greater than 0 and less than 1\n"},

@@ -64,13 +64,14 @@ class Source final : public FeedSession, public std::enable_shared_from_this<Sou
     }
     if (host.post({shared_from_this(), std::move(content)})) room();
   }
-  static std::vector<Row> rows(int message) {
-    std::vector<Row> rows;
+  static Rows rows(int message) {
+    Rows message_rows;
+    std::vector<Row>& rows = message_rows.rows;
     for (int i = message * kRows; i < (message + 1) * kRows; ++i) {
       rows.push_back({static_cast<std::uint64_t>(i + 1), kStart + i * kSecond / 10,
-                      static_cast<std::uint32_t>(i % 2), 0, 1.0 + 0.001 * i});
+                      static_cast<std::uint32_t>(i % 2), 0, 1.0 + 0.001 * i, 0, 0});
     }
-    return rows;
+    return message_rows;
   }
 
   std::mutex mutex_;

@@ -76,14 +76,5 @@ TEST(EstimateQuality, FollowsTheWorstState) {
   EXPECT_EQ(quality_of(unborn), v1::ESTIMATE_BAD);
 }
 
-TEST(ExplanationWords, NameWhatIsUnsound) {
-  const auto loaded = rig::load(trolley(), "test.yaml");
-  ASSERT_TRUE(loaded.rig);
-  EXPECT_EQ(explanation_words(*loaded.rig, {0.9, {}}), "all channels are sound");
-  const engine::Explanation two{
-      0.1, {{0, engine::Condition::kOffset, 0.1834, 0.006}, {1, engine::Condition::kFrozen, 2.0, 0.1}}};
-  EXPECT_EQ(explanation_words(*loaded.rig, two), "left offset by +0.183 ± 0.006 m; right frozen");
-}
-
 }  // namespace
 }  // namespace steelyard::service

@@ -231,6 +231,87 @@ TEST_F(FeedTest, OpeningsAreChecked) {
                         StatusCode::INVALID_ARGUMENT, "opening.channels:"));
 }
 
+constexpr const char* kYard = R"(
+rig: yard
+response: 10 s
+states:
+  east:  {unit: m, start: 1, start_sd: 10}
+  north: {unit: m, start: 2, start_sd: 10}
+unrest: {east: 0.01, north: 0.01}
+channels:
+  fix:  {reads: [east, north], sd: [0.1, 0.1], range: [[-99, 99], [-99, 99]], period: 1 s}
+  tape: {reads: east, sd: 0.1, range: [-99, 99], period: 1 s}
+)";
+
+/// Rows fix, tape, fix, tape …; fix reads (7, −3), with `more` further values in all.
+v1::Batch yard_batch(std::uint64_t first, int rows, int more) {
+  v1::Batch columns = batch({.first_sequence = first,
+                             .start_ns = kStart + static_cast<std::int64_t>(first) * kSecond,
+                             .step_ns = kSecond / 2,
+                             .rows = rows,
+                             .value = 7.0});
+  for (int i = 1; i < rows; i += 2) columns.set_channel(i, 1);
+  for (int i = 0; i < more; ++i) columns.add_more_values(-3.0 + 0.001 * i);
+  return columns;
+}
+
+TEST_F(FeedTest, VectorReadingsAreTakenWithAllTheirParts) {
+  ASSERT_TRUE(put(kYard).ok());
+  FeedCall feed(*stub_, "yard", "plc", {"fix", "tape"});
+  feed.answer();
+  feed.send(yard_batch(1, 20, 10));
+  EXPECT_EQ(feed.until_taken(20).refused_total(), 0U);
+  v1::Reading single;
+  single.set_sequence(21);
+  single.set_time_ns(kStart + 60 * kSecond);
+  single.set_value(7.0);
+  single.add_more_values(-3.0);
+  feed.send(single);
+  EXPECT_EQ(feed.until_taken(21).refused_total(), 0U);
+  v1::Moment moment;
+  ASSERT_TRUE(estimate("yard", moment).ok());
+  EXPECT_EQ(moment.time_ns(), kStart + 60 * kSecond);
+  EXPECT_NEAR(moment.states(0).mean(), 7.0, 0.1);
+}
+
+TEST_F(FeedTest, AWrongNumberOfPartsRefusesTheBatchsReadings) {
+  ASSERT_TRUE(put(kYard).ok());
+  FeedCall feed(*stub_, "yard", "plc", {"fix", "tape"});
+  feed.answer();
+  feed.send(yard_batch(1, 4, 3));
+  const v1::FeedResponse answer = feed.until_taken(4);
+  ASSERT_EQ(answer.refused_size(), 4);
+  EXPECT_EQ(answer.refused(0).reason(), v1::WRONG_PARTS);
+  EXPECT_EQ(answer.refused(3).message(),
+            "batch.more_values: has 3; its rows of vector channels must have 2 together");
+  feed.send(yard_batch(5, 4, 2));
+  EXPECT_EQ(feed.until_taken(8).refused_total(), 4U) << "the feed goes on";
+  v1::Reading single;
+  single.set_sequence(9);
+  single.set_time_ns(kStart + 60 * kSecond);
+  feed.send(single);
+  const v1::FeedResponse alone = feed.until_taken(9);
+  ASSERT_EQ(alone.refused_size(), 1);
+  EXPECT_EQ(alone.refused(0).message(), "fix: has 1 values; must have 2, one for each part");
+}
+
+TEST_F(FeedTest, APartThatIsNotFiniteRefusesItsReadingAlone) {
+  ASSERT_TRUE(put(kYard).ok());
+  FeedCall feed(*stub_, "yard", "plc", {"fix", "tape"});
+  feed.answer();
+  v1::Batch columns = yard_batch(1, 6, 3);
+  columns.set_more_values(1, std::numeric_limits<double>::quiet_NaN());
+  columns.set_more_values(2, std::numeric_limits<double>::infinity());
+  columns.add_quality_row(4);
+  columns.add_quality(v1::BAD);
+  feed.send(columns);
+  const v1::FeedResponse answer = feed.until_taken(6);
+  ASSERT_EQ(answer.refused_size(), 1) << "what is called bad may be any number";
+  EXPECT_EQ(answer.refused(0).sequence(), 3U);
+  EXPECT_EQ(answer.refused(0).reason(), v1::NOT_FINITE);
+  EXPECT_EQ(answer.refused(0).message(), "fix.2: value is nan; must be finite");
+}
+
 TEST_F(FeedTest, NewFeedOfASourceTakesOver) {
   FeedCall older(*stub_, "trolley", "plc", {"left"});
   older.send(batch({.rows = 10}));

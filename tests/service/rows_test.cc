@@ -4,9 +4,12 @@
 
 #include <gtest/gtest.h>
 
+#include <array>
 #include <functional>
 #include <limits>
 #include <string>
+#include <utility>
+#include <vector>
 
 #include "fixture.h"
 
@@ -53,13 +56,18 @@ const Wrong kWrong[] = {
        b.add_quality(v1::BAD);
      },
      "batch.quality_row[1]: is 1"},
+    {"more values than all rows can have",
+     [](v1::Batch& b) {
+       for (int i = 0; i < 3 * 31 + 1; ++i) b.add_more_values(1);
+     },
+     "batch.more_values: has 94 values; at most 31 for each of 3 readings"},
 };
 
 TEST(Rows, WrongBatchesAreRefusedWithFieldValueAndRule) {
   for (const Wrong& wrong : kWrong) {
     v1::Batch spoilt = batch({.rows = 3});
     wrong.spoil(spoilt);
-    std::vector<Row> rows;
+    Rows rows;
     EXPECT_TRUE(is_status(to_rows(spoilt, Limits{}, rows), grpc::StatusCode::INVALID_ARGUMENT, wrong.message))
         << wrong.name;
   }
@@ -70,8 +78,9 @@ TEST(Rows, ColumnsBecomeRows) {
   columns.set_time_step_ns(2, -100);
   columns.add_quality_row(1);
   columns.add_quality(v1::UNCERTAIN);
-  std::vector<Row> rows;
-  ASSERT_TRUE(to_rows(columns, Limits{}, rows).ok());
+  Rows message;
+  ASSERT_TRUE(to_rows(columns, Limits{}, message).ok());
+  const std::vector<Row>& rows = message.rows;
   ASSERT_EQ(rows.size(), 3U);
   EXPECT_EQ(rows[0].time_ns, 1000);
   EXPECT_EQ(rows[1].time_ns, 1500);
@@ -82,10 +91,44 @@ TEST(Rows, ColumnsBecomeRows) {
   EXPECT_EQ(rows[2].channel, 2U);
 }
 
+// Channels 0 to 2 have 1, 3 and 2 parts.
+TEST(Rows, RowsOfVectorChannelsTakeTheirPartsInTurn) {
+  v1::Batch columns = batch({.rows = 4});
+  for (const auto& [row, channel] : {std::pair{0, 1U}, {1, 0U}, {2, 2U}, {3, 9U}}) {
+    columns.set_channel(row, channel);
+  }
+  for (const double value : {10.0, 11.0, 20.0}) columns.add_more_values(value);
+  Rows message;
+  ASSERT_TRUE(to_rows(columns, Limits{}, message).ok());
+  const std::array<std::uint32_t, 3> parts{1, 3, 2};
+  EXPECT_EQ(share_out(message, parts), 3U);
+  EXPECT_EQ(message.more_values, (std::vector<double>{10.0, 11.0, 20.0}));
+  EXPECT_EQ(message.rows[0].more_count, 2U);
+  EXPECT_EQ(message.rows[1].more_count, 0U);
+  EXPECT_EQ(message.rows[2].more_at, 2U);
+  EXPECT_EQ(message.rows[2].more_count, 1U);
+  EXPECT_EQ(message.rows[3].more_count, 0U) << "a channel that is not known has one part";
+}
+
+TEST(Rows, ASingleReadingHasItsPartsAlready) {
+  v1::Reading reading;
+  reading.set_sequence(1);
+  reading.add_more_values(2.5);
+  Rows message;
+  ASSERT_TRUE(to_rows(reading, message).ok());
+  EXPECT_EQ(message.rows[0].more_count, 1U);
+  EXPECT_EQ(share_out(message, {}), 1U);
+  EXPECT_EQ(message.rows[0].more_count, 1U);
+  for (int i = 0; i < 31; ++i) reading.add_more_values(0);
+  EXPECT_TRUE(is_status(to_rows(reading, message), grpc::StatusCode::INVALID_ARGUMENT,
+                        "reading.more_values: has 32 values; at most 31"));
+}
+
 TEST(Rows, EmptyBatchIsNoError) {
-  std::vector<Row> rows(5);
+  Rows rows;
+  rows.rows.resize(5);
   EXPECT_TRUE(to_rows(batch({.rows = 0}), Limits{}, rows).ok());
-  EXPECT_TRUE(rows.empty());
+  EXPECT_TRUE(rows.rows.empty());
 }
 
 }  // namespace

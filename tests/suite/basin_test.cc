@@ -86,7 +86,7 @@ class Replay {
     timeline::Reading r;
     r.signal = *rig_->find(signal);
     r.time_ns = std::llround((kStart + t_s) * 1e9);
-    r.value = value;
+    r.values = value;
     r.source = source_;
     r.sequence = ++sequence_;
     batch_.push_back(r);

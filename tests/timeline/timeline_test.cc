@@ -47,7 +47,7 @@ class Feeder {
     Reading r;
     r.signal = *timeline.rig().find(signal);
     r.time_ns = static_cast<TimeNs>(std::llround(t_s * 1e9));
-    r.value = value;
+    r.values = value;
     r.source = source_;
     r.sequence = ++sequence_;
     return r;
@@ -118,6 +118,67 @@ TEST(Timeline, RefusesWhatIsOlderThanWhatWasFused) {
   EXPECT_EQ(feeder.send("right", 9, 1.0), Outcome::kTooOld);
   EXPECT_EQ(feeder.send("right", 10, 1.0), Outcome::kFused) << "an equal time is not older";
   EXPECT_EQ(feeder.timeline.clock(), 10 * kSecond);
+}
+
+constexpr const char* kPlane = R"(
+rig: plane
+response: 10 s
+states:
+  east:  {unit: m, start: 1, start_sd: 1}
+  north: {unit: m, start: 2, start_sd: 1}
+unrest: {east: 0.01, north: 0.01}
+channels:
+  fix: {reads: [east, north], sd: [0.1, 0.1], range: [[-9, 9], [-9, 9]], period: 1 s, delay: 2 s}
+  tape: {reads: east, sd: 0.1, range: [-9, 9], period: 1 s}
+)";
+
+Values two(double first, double second) {
+  Values values(first);
+  EXPECT_TRUE(values.add(second));
+  return values;
+}
+
+TEST(Timeline, AVectorReadingHasOneValueForEachPart) {
+  constexpr double kNan = std::numeric_limits<double>::quiet_NaN();
+  Feeder feeder(kPlane);
+  Reading r = feeder.make("fix", 1, 0);
+  r.values = two(1.0, 2.0);
+  EXPECT_EQ(feeder.send(r), Outcome::kFused);
+  EXPECT_EQ(feeder.send("fix", 2, 1.0), Outcome::kWrongParts);
+  r = feeder.make("tape", 3, 0);
+  r.values = two(1.0, 2.0);
+  EXPECT_EQ(feeder.send(r), Outcome::kWrongParts);
+  for (const Values& values : {two(1.0, kNan), two(kNan, 1.0)}) {
+    r = feeder.make("fix", 3, 0);
+    r.values = values;
+    EXPECT_EQ(feeder.send(r), Outcome::kNotFinite);
+  }
+  r = feeder.make("fix", 4, 0);
+  r.values = two(1.0, kNan);
+  r.quality = Quality::kBad;
+  EXPECT_EQ(feeder.send(r), Outcome::kNotUsable);
+}
+
+TEST(Timeline, ADelayedVectorReadingTellsOfItsPast) {
+  Feeder feeder(kPlane);
+  std::vector<Reading> batch{feeder.make("tape", 1, 1.0), feeder.make("fix", 4, 0),
+                             feeder.make("tape", 3, 1.0)};
+  batch[1].values = two(1.0, 2.0);
+  std::vector<Outcome> outcomes;
+  std::vector<TimeNs> moments;
+  feeder.timeline.run(batch, outcomes, [&](TimeNs t) { moments.push_back(t); });
+  EXPECT_EQ(moments, (std::vector<TimeNs>{kSecond, 2 * kSecond, 3 * kSecond}));
+  EXPECT_EQ(batch[1].values.size(), 2U) << "sorted between the others";
+  EXPECT_EQ(outcomes, std::vector<Outcome>(3, Outcome::kFused));
+}
+
+TEST(Values, HoldUpToTheirMost) {
+  const std::vector<double> many(Values::kMost + 1, 3.0);
+  Values values(many);
+  EXPECT_EQ(values.size(), Values::kMost);
+  EXPECT_FALSE(values.add(1.0));
+  EXPECT_EQ(Values(many).all().back(), 3.0);
+  EXPECT_EQ(Values(7.0).all().size(), 1U);
 }
 
 TEST(Timeline, RefusesNumbersThatAreNotFinite) {

@@ -4,7 +4,9 @@
 
 #include <algorithm>
 #include <array>
+#include <charconv>
 #include <cmath>
+#include <system_error>
 #include <utility>
 
 #include "lib/log/text.h"
@@ -31,6 +33,37 @@ std::optional<std::size_t> find_cell(const std::vector<Cell>& cells, std::string
       std::find_if(cells.begin(), cells.end(), [text](const Cell& cell) { return cell.text == text; });
   if (found == cells.end()) return std::nullopt;
   return static_cast<std::size_t>(found - cells.begin());
+}
+
+/// "fix.2" is part 2 of "fix"; part 0: the name is not of this form.
+struct PartName {
+  std::string_view name;
+  int part = 0;
+};
+
+PartName split_part(std::string_view text) {
+  const std::size_t dot = text.rfind('.');
+  if (dot == std::string_view::npos) return {text, 0};
+  const std::string_view digits = text.substr(dot + 1);
+  int part = 0;
+  const auto [end, error] = std::from_chars(digits.data(), digits.data() + digits.size(), part);
+  const bool whole = error == std::errc() && end == digits.data() + digits.size();
+  if (!whole || part < 1 || digits.front() == '0') return {text, 0};
+  return {text.substr(0, dot), part};
+}
+
+std::string part_name(std::string_view name, std::size_t part) {
+  return std::string(name) + "." + std::to_string(part);
+}
+
+/// "value", "value2", "value3" …
+std::string value_name(std::size_t part) { return part == 1 ? "value" : "value" + std::to_string(part); }
+
+bool is_value_name(std::string_view text) {
+  for (std::size_t part = 1; part <= timeline::Values::kMost; ++part) {
+    if (text == value_name(part)) return true;
+  }
+  return false;
 }
 
 /// A value that its source declares unusable need not be there at all.
@@ -93,16 +126,36 @@ bool LogReader::open_long(const std::vector<Cell>& header) {
       sound = problem(header[i], "header", "has the column " + shown(name) + " twice");
     } else if (name == "channel") {
       long_->channel = i;
-    } else if (name == "value") {
-      long_->value = i;
+    } else if (is_value_name(name)) {
+      sound = add_long_value(header, i) && sound;
     } else if (name == "quality") {
       long_->quality = i;
     } else if (name != "time") {
-      sound = problem(header[i], "header",
-                      "has the column " + shown(name) + "; a long log has time, channel, value and quality");
+      sound = problem(
+          header[i], "header",
+          "has the column " + shown(name) + "; a long log has time, channel, value, value2 … and quality");
     }
   }
   return sound;
+}
+
+/// All value columns are put in their places when the first of them is met.
+bool LogReader::add_long_value(const std::vector<Cell>& header, std::size_t at) {
+  if (!long_->values.empty()) return true;
+  std::size_t last = 1;
+  for (std::size_t part = 1; part <= timeline::Values::kMost; ++part) {
+    if (find_cell(header, value_name(part))) last = part;
+  }
+  for (std::size_t part = 1; part <= last; ++part) {
+    const auto column = find_cell(header, value_name(part));
+    if (!column) {
+      return problem(
+          header[at], "header",
+          "has the column " + shown(value_name(last)) + " but no column " + shown(value_name(part)));
+    }
+    long_->values.push_back(*column);
+  }
+  return true;
 }
 
 bool LogReader::open_wide(const std::vector<Cell>& header) {
@@ -117,6 +170,7 @@ bool LogReader::open_wide(const std::vector<Cell>& header) {
   for (std::size_t i = 0; i < header.size(); ++i) {
     if (header[i].text.ends_with(kQualitySuffix)) sound = add_wide_quality(header[i], i) && sound;
   }
+  sound = check_wide_parts(header.front()) && sound;
   if (sound && wide_.empty()) {
     return problem(header.front(), "header", "names no channel; must have a column for at least one");
   }
@@ -124,13 +178,51 @@ bool LogReader::open_wide(const std::vector<Cell>& header) {
 }
 
 bool LogReader::add_wide_column(const Cell& cell, std::size_t at) {
-  const std::optional<rig::Signal> signal = find_(cell.text);
-  if (!signal) {
+  const std::optional<Named> named = find_(cell.text);
+  if (!named) return add_wide_part(cell, at);
+  if (named->parts > 1) {
+    return problem(cell, "header",
+                   "has the column " + shown(cell.text) + "; the channel has " +
+                       std::to_string(named->parts) + " parts, " + shown(part_name(cell.text, 1)) + " …");
+  }
+  wide_.push_back({std::string(cell.text), named->signal, {at}, std::nullopt, cell.column});
+  return true;
+}
+
+bool LogReader::add_wide_part(const Cell& cell, std::size_t at) {
+  const auto [name, part] = split_part(cell.text);
+  const std::optional<Named> named = part > 0 ? find_(name) : std::nullopt;
+  if (!named || named->parts < 2) {
     return problem(cell, "header",
                    "has the column " + shown(cell.text) + "; the rig has no such channel or input");
   }
-  wide_.push_back({std::string(cell.text), *signal, at, std::nullopt});
+  if (part > named->parts) {
+    return problem(cell, "header",
+                   "has the column " + shown(cell.text) + "; the channel has " +
+                       std::to_string(named->parts) + " parts");
+  }
+  auto column = std::find_if(wide_.begin(), wide_.end(), [&](const Column& one) { return one.name == name; });
+  if (column == wide_.end()) {
+    const auto parts = static_cast<std::size_t>(named->parts);
+    column = wide_.insert(wide_.end(),
+                          {std::string(name), named->signal, std::vector<std::optional<std::size_t>>(parts),
+                           std::nullopt, cell.column});
+  }
+  column->values[static_cast<std::size_t>(part) - 1] = at;
   return true;
+}
+
+bool LogReader::check_wide_parts(const Cell& first) {
+  bool sound = true;
+  for (const Column& column : wide_) {
+    for (std::size_t i = 0; i < column.values.size(); ++i) {
+      if (column.values[i]) continue;
+      sound = problem(first.line, column.header_column, "header",
+                      "has no column " + shown(part_name(column.name, i + 1)) + "; a log of " + column.name +
+                          " must have all its " + std::to_string(column.values.size()) + " parts");
+    }
+  }
+  return sound;
 }
 
 bool LogReader::add_wide_quality(const Cell& cell, std::size_t at) {
@@ -195,30 +287,69 @@ std::optional<engine::TimeNs> LogReader::read_time() {
 
 void LogReader::read_long(LogRow& row, engine::TimeNs time_ns) {
   const Cell& name = csv_.cells()[long_->channel];
-  const std::optional<rig::Signal> signal = find_(name.text);
-  if (!signal) {
+  const std::optional<Named> named = find_(name.text);
+  if (!named) {
     problem(name, "channel", "is " + shown(name.text) + "; the rig has no such channel or input");
     return;
   }
   const std::optional<Quality> quality = read_quality(long_->quality, name.text);
   if (!quality) return;
-  const Cell& cell = csv_.cells()[long_->value];
-  if (cell.text.empty() && needs_no_value(*quality)) {
-    row.readings.push_back({time_ns, *signal, 0.0, *quality});
-    return;
+  const auto values = read_long_values(name, named->parts, *quality);
+  if (values) row.readings.push_back({time_ns, named->signal, *values, *quality});
+}
+
+std::optional<timeline::Values> LogReader::read_long_values(const Cell& name, int parts, Quality quality) {
+  const auto wanted = static_cast<std::size_t>(parts);
+  const std::vector<Cell>& cells = csv_.cells();
+  const auto is_empty = [&](std::size_t at) { return cells[at].text.empty(); };
+  if (needs_no_value(quality) && std::all_of(long_->values.begin(), long_->values.end(), is_empty)) {
+    return timeline::Values(std::vector<double>(wanted, 0.0));
   }
-  const std::optional<double> value = read_value(cell, name.text);
-  if (value) row.readings.push_back({time_ns, *signal, *value, *quality});
+  if (wanted > long_->values.size()) {
+    problem(name, name.text,
+            "has " + std::to_string(wanted) + " parts; the log has no column " +
+                shown(value_name(long_->values.size() + 1)));
+    return std::nullopt;
+  }
+  timeline::Values values(std::span<const double>{});
+  for (std::size_t i = 0; i < long_->values.size(); ++i) {
+    const Cell& cell = cells[long_->values[i]];
+    const std::string field = wanted == 1 ? std::string(name.text) : part_name(name.text, i + 1);
+    if (i >= wanted) {
+      if (cell.text.empty()) continue;
+      problem(cell, name.text,
+              value_name(i + 1) + " is " + shown(cell.text) + "; must be empty for a channel of " +
+                  std::to_string(wanted) + (wanted == 1 ? " part" : " parts"));
+      return std::nullopt;
+    }
+    const std::optional<double> value = read_value(cell, field);
+    if (!value) return std::nullopt;
+    values.add(*value);
+  }
+  return values;
 }
 
 void LogReader::read_wide(LogRow& row, engine::TimeNs time_ns) {
   for (const Column& column : wide_) {
-    const Cell& cell = csv_.cells()[column.value];
-    if (cell.text.empty()) continue;
-    const std::optional<double> value = read_value(cell, column.name);
+    const bool any = std::any_of(column.values.begin(), column.values.end(),
+                                 [this](const auto& at) { return !csv_.cells()[*at].text.empty(); });
+    if (!any) continue;
+    const std::optional<timeline::Values> values = read_wide_values(column);
     const std::optional<Quality> quality = read_quality(column.quality, column.name);
-    if (value && quality) row.readings.push_back({time_ns, column.signal, *value, *quality});
+    if (values && quality) row.readings.push_back({time_ns, column.signal, *values, *quality});
   }
+}
+
+std::optional<timeline::Values> LogReader::read_wide_values(const Column& column) {
+  timeline::Values values(std::span<const double>{});
+  for (std::size_t i = 0; i < column.values.size(); ++i) {
+    const bool alone = column.values.size() == 1;
+    const std::optional<double> value =
+        read_value(csv_.cells()[*column.values[i]], alone ? column.name : part_name(column.name, i + 1));
+    if (!value) return std::nullopt;
+    values.add(*value);
+  }
+  return values;
 }
 
 std::optional<double> LogReader::read_value(const Cell& cell, std::string_view name) {

@@ -1,9 +1,10 @@
 // SPDX-License-Identifier: Apache-2.0
 // Logs: readings from a CSV file, long or wide, as design.md §5 says.
 //
-//   long:  time,channel,value[,quality]
-//   wide:  time,<name>,<name>.quality,<name>…     an empty cell is no reading
+//   long:  time,channel,value[,value2,value3…][,quality]
+//   wide:  time,<name>,<name>.quality,<name>.1,<name>.2…     an empty cell is no reading
 //
+// The parts of a vector channel stand in value, value2 … or in <name>.1, <name>.2 …; all of them or none.
 // A wrong header is fatal. A wrong cell refuses its own reading, a wrong time or a wrong number of cells the
 // row; each is told to `on_problem` and reading goes on. Nothing in the file can throw or abort.
 //
@@ -23,6 +24,7 @@
 #include "engine/model.h"
 #include "lib/log/csv.h"
 #include "rig/rig.h"
+#include "timeline/values.h"
 
 namespace steelyard::client {
 
@@ -30,8 +32,14 @@ namespace steelyard::client {
 struct LogReading {
   engine::TimeNs time_ns = 0;
   rig::Signal signal;
-  double value = 0.0;  ///< finite
+  timeline::Values values;  ///< finite, one for each part
   engine::Quality quality = engine::Quality::kGood;
+};
+
+/// What a name in a log stands for.
+struct Named {
+  rig::Signal signal;
+  int parts = 1;  ///< of the channel
 };
 
 /// The readings of one row (none if all its cells are empty or refused).
@@ -47,14 +55,14 @@ struct LogRow {
 /// aggregate with initialisers while the class is incomplete.)
 struct LongColumns {
   std::size_t channel = 0;
-  std::size_t value = 0;
+  std::vector<std::size_t> values;  ///< by part
   std::optional<std::size_t> quality;
 };
 
 class LogReader {
  public:
   /// What a name in the log stands for; nullopt: the rig has no such channel or input.
-  using Find = std::function<std::optional<rig::Signal>(std::string_view)>;
+  using Find = std::function<std::optional<Named>(std::string_view)>;
   /// Told everything that is wrong, in the order of the file.
   using OnProblem = std::function<void(const rig::Problem&)>;
 
@@ -71,19 +79,26 @@ class LogReader {
   [[nodiscard]] bool read_failed() const { return csv_.read_failed(); }
 
  private:
-  struct Column {  // of a wide log
+  struct Column {  // of a wide log: those of one name
     std::string name;
     rig::Signal signal;
-    std::size_t value = 0;
+    std::vector<std::optional<std::size_t>> values;  // by part; none is missing once the header is read
     std::optional<std::size_t> quality;
+    int header_column = 0;  // of its first cell, for messages
   };
   bool open_long(const std::vector<CsvReader::Cell>& header);
+  bool add_long_value(const std::vector<CsvReader::Cell>& header, std::size_t at);
   bool open_wide(const std::vector<CsvReader::Cell>& header);
   bool add_wide_column(const CsvReader::Cell& cell, std::size_t at);
+  bool add_wide_part(const CsvReader::Cell& cell, std::size_t at);
+  bool check_wide_parts(const CsvReader::Cell& first);
   bool add_wide_quality(const CsvReader::Cell& cell, std::size_t at);
   void read_row(LogRow& row);
   void read_long(LogRow& row, engine::TimeNs time_ns);
   void read_wide(LogRow& row, engine::TimeNs time_ns);
+  std::optional<timeline::Values> read_long_values(const CsvReader::Cell& name, int parts,
+                                                   engine::Quality quality);
+  std::optional<timeline::Values> read_wide_values(const Column& column);
   std::optional<engine::TimeNs> read_time();
   std::optional<double> read_value(const CsvReader::Cell& cell, std::string_view name);
   std::optional<engine::Quality> read_quality(std::optional<std::size_t> at, std::string_view name);

@@ -5,6 +5,7 @@
 #include <algorithm>
 #include <cmath>
 #include <limits>
+#include <span>
 
 namespace steelyard::client {
 namespace {
@@ -30,6 +31,7 @@ Reorder::Reorder(const rig::Rig& rig, std::size_t max_waiting)
   for (const engine::ChannelModel& channel : rig.model->channels) {
     delay_ns_.push_back(to_ns(channel.delay_s));
     longest_delay_ns_ = std::max(longest_delay_ns_, delay_ns_.back());
+    stride_ = std::max(stride_, static_cast<std::size_t>(channel.parts()));
   }
 }
 
@@ -52,9 +54,25 @@ bool Reorder::add(const LogReading& reading) {
   const TimeNs key = key_ns(reading);
   if (any_released_ && key < released_ns_) return false;
   newest_ns_ = first ? reading.time_ns : std::max(newest_ns_, reading.time_ns);
-  heap_.push_back({key, arrivals_++, reading});
+  const auto parts = std::min(reading.values.size(), stride_);
+  heap_.push_back({key, arrivals_++, reading.time_ns, reading.signal, reading.quality,
+                   static_cast<std::uint8_t>(parts), put(reading.values)});
   std::push_heap(heap_.begin(), heap_.end(), later);
   return true;
+}
+
+/// The slot in which they stand now.
+std::uint32_t Reorder::put(const timeline::Values& values) {
+  if (free_slots_.empty()) {
+    free_slots_.push_back(static_cast<std::uint32_t>(values_.size() / stride_));
+    values_.resize(values_.size() + stride_);
+  }
+  const std::uint32_t slot = free_slots_.back();
+  free_slots_.pop_back();
+  const auto all = values.all();
+  std::copy_n(all.begin(), std::min(all.size(), stride_),
+              values_.begin() + static_cast<std::ptrdiff_t>(slot * stride_));
+  return slot;
 }
 
 /// No acceptable reading can have a key before this.
@@ -69,19 +87,31 @@ void Reorder::release(std::vector<timeline::Reading>& out) {
   }
 }
 
+bool Reorder::may_pop(const std::vector<timeline::Reading>& out, std::size_t before) const {
+  const std::size_t count = out.size() - before;
+  return !heap_.empty() && (count < kMostAtOnce || heap_.front().key_ns == popped_ns_);
+}
+
 void Reorder::release_until(TimeNs bound_ns, std::vector<timeline::Reading>& out) {
-  while (!heap_.empty() && heap_.front().key_ns < bound_ns) pop(out);
-  if (!any_released_ || bound_ns > released_ns_) released_ns_ = bound_ns;
+  const std::size_t before = out.size();
+  while (may_pop(out, before) && heap_.front().key_ns < bound_ns) pop(out);
+  const TimeNs done_ns = heap_.empty() ? bound_ns : std::min(bound_ns, heap_.front().key_ns);
+  if (!any_released_ || done_ns > released_ns_) released_ns_ = done_ns;
   any_released_ = true;
 }
 
 void Reorder::release_rest(std::vector<timeline::Reading>& out) {
-  while (!heap_.empty()) pop(out);
+  const std::size_t before = out.size();
+  while (may_pop(out, before)) pop(out);
 }
 
 void Reorder::pop(std::vector<timeline::Reading>& out) {
-  const LogReading& reading = heap_.front().reading;
-  out.push_back({reading.time_ns, reading.signal, reading.value, reading.quality, 0, ++sequence_});
+  const Waiting& one = heap_.front();
+  popped_ns_ = one.key_ns;
+  const std::span<const double> slots(values_);
+  const timeline::Values values(slots.subspan(one.slot * stride_, one.parts));
+  out.push_back({one.time_ns, one.signal, values, one.quality, 0, ++sequence_});
+  free_slots_.push_back(one.slot);
   std::pop_heap(heap_.begin(), heap_.end(), later);
   heap_.pop_back();
 }

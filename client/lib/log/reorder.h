@@ -25,23 +25,32 @@ class Reorder {
   /// How far a reading lies behind the newest one so far, for messages.
   [[nodiscard]] double behind_s(const LogReading& reading) const;
 
+  /// Readings that come out at once; then all of the last one's time.
+  static constexpr std::size_t kMostAtOnce = 1U << 14U;
+
   /// Appends to `out` the readings that nothing can overtake any more, in order of time less delay, and in
-  /// the order of their arrival where that is equal. All readings of one time come out together. Sequences
-  /// rise.
+  /// the order of their arrival where that is equal; the next call goes on beyond kMostAtOnce. All readings
+  /// of one time come out together. Sequences rise.
   void release(std::vector<timeline::Reading>& out);
-  /// The same for all that is left.
+  /// The same for what is left; done when nothing comes any more.
   void release_rest(std::vector<timeline::Reading>& out);
 
  private:
   struct Waiting {
     engine::TimeNs key_ns;  // time less delay, as the engine will see it
     std::uint64_t arrival;
-    LogReading reading;
+    engine::TimeNs time_ns;
+    rig::Signal signal;
+    engine::Quality quality;
+    std::uint8_t parts;
+    std::uint32_t slot;  // where its values stand in values_
   };
+  [[nodiscard]] std::uint32_t put(const timeline::Values& values);
   static bool later(const Waiting& a, const Waiting& b);
   [[nodiscard]] engine::TimeNs key_ns(const LogReading& reading) const;
   [[nodiscard]] engine::TimeNs bound_ns() const;
   void release_until(engine::TimeNs bound_ns, std::vector<timeline::Reading>& out);
+  [[nodiscard]] bool may_pop(const std::vector<timeline::Reading>& out, std::size_t before) const;
   void pop(std::vector<timeline::Reading>& out);
 
   std::vector<engine::TimeNs> delay_ns_;  // by channel
@@ -49,6 +58,10 @@ class Reorder {
   engine::TimeNs longest_delay_ns_ = 0;
   std::size_t max_waiting_;
   std::vector<Waiting> heap_;
+  std::vector<double> values_;  // in slots of stride_ numbers: as many as the rig's longest channel has parts
+  std::vector<std::uint32_t> free_slots_;
+  std::size_t stride_ = 1;
+  engine::TimeNs popped_ns_ = 0;  // key of the last one that came out
   std::uint64_t arrivals_ = 0;
   std::uint64_t sequence_ = 0;
   engine::TimeNs newest_ns_ = 0;

@@ -1,32 +1,43 @@
 // SPDX-License-Identifier: Apache-2.0
-// Changes and stretches, told from sequences of conditions. One channel, an estimate a second, joined over 5
-// s.
-#include "lib/log/stretches.h"
+// Changes and stretches, told from sequences of kinds. One channel, an estimate a second, joined over 5 s.
+#include "timeline/stretches.h"
 
 #include <gtest/gtest.h>
 
 #include <string>
 #include <vector>
 
-namespace steelyard::client {
+namespace steelyard::timeline {
 namespace {
 
 using engine::TimeNs;
 constexpr TimeNs kS = 1'000'000'000;
 
-ChannelView view(char kind, double offset) {
+engine::ChannelEstimate channel(char kind, double offset) {
   const std::string kinds = "scowtf";  // sound, creeping, offset, wandering, stuck, frozen
-  ChannelView one;
-  if (kind == '-') {
-    one.silent = 0.9;
+  engine::ChannelEstimate one;
+  one.age_s = 0.0;
+  if (kind == '-' || kind == 'n') {  // silent, noisy
+    one.silent = kind == '-' ? 0.9 : 0.0;
+    one.trust = kind == 'n' ? 0.1 : 1.0;
+    one.noise_sd = kind == 'n' ? 0.4 : 0.04;
+    one.noise_sd90 = {0.8 * one.noise_sd, 1.2 * one.noise_sd};
     one.probability[0] = 1.0;
     return one;
   }
+  one.trust = kind == 's' ? 0.9 : 0.02;
   one.probability.fill(0.02);
   one.probability[kinds.find(kind)] = 0.9;
   one.offset = offset;
   one.offset_sd = 0.01;
   return one;
+}
+
+engine::Estimate at(TimeNs time_ns, char kind, double offset = 0.0) {
+  engine::Estimate estimate;
+  estimate.time_ns = time_ns;
+  estimate.channels.push_back(channel(kind, offset));
+  return estimate;
 }
 
 struct Told {
@@ -38,15 +49,15 @@ struct Told {
 Told follow(const std::string& kinds, double slope = 0.0) {
   Stretches stretches(1, 5 * kS);
   Told told;
+  Stretches::Calls calls;
+  calls.words = [](int) { return std::string("words"); };
+  calls.on_change = [&told](const Change& change) {
+    EXPECT_EQ(change.words, "words");
+    told.changes.push_back(std::to_string(change.time_ns / kS) + " " + kind_name(change.kind));
+  };
   TimeNs t = 0;
   for (const char kind : kinds) {
-    const std::vector<ChannelView> views{view(kind, slope * static_cast<double>(t))};
-    stretches.add(
-        t * kS, views, [](int) { return std::string("words"); },
-        [&told](const Change& change) {
-          EXPECT_EQ(change.words, "words");
-          told.changes.push_back(std::to_string(change.time_ns / kS) + " " + kind_name(change.kind));
-        });
+    stretches.add(at(t * kS, kind, slope * static_cast<double>(t)), calls);
     ++t;
   }
   told.stretches = stretches.finish();
@@ -84,11 +95,10 @@ TEST(Stretches, JoinsShortReturnsToSound) {
 TEST(Stretches, AFlickerIsAStretchButIsNotTold) {
   Stretches stretches(1, 5 * kS);
   std::size_t changes = 0;
-  const auto count = [&changes](const Change&) { ++changes; };
+  const Stretches::Calls calls{.on_change = [&changes](const Change&) { ++changes; }};
   const TimeNs half = kS / 2;
   for (TimeNs i = 0; i < 30; ++i) {
-    const std::vector<ChannelView> views{view(i == 4 ? 'o' : 's', 0.0)};
-    stretches.add(i * half, views, {}, count);
+    stretches.add(at(i * half, i == 4 ? 'o' : 's'), calls);
   }
   EXPECT_EQ(changes, 0U);
   const std::vector<Stretch> all = stretches.finish();
@@ -118,7 +128,7 @@ TEST(Stretches, OneStillOpenEndsWithTheLastEstimate) {
   ASSERT_EQ(told.stretches.size(), 1U);
   EXPECT_TRUE(told.stretches.front().open);
   EXPECT_EQ(told.stretches.front().to_ns, 4 * kS);
-  EXPECT_FALSE(told.stretches.front().has_size);
+  EXPECT_TRUE(told.stretches.front().sizes.empty());
 }
 
 TEST(Stretches, ChatterBetweenConditionsIsNotTold) {
@@ -142,8 +152,11 @@ TEST(Stretches, TheKindIsTheOneThatLedLongest) {
 TEST(Stretches, TheSizeIsTheLargest) {
   const Told told = follow("scccccc", -0.1);
   ASSERT_EQ(told.stretches.size(), 1U);
-  EXPECT_TRUE(told.stretches.front().has_size);
-  EXPECT_NEAR(told.stretches.front().size, -0.6, 1e-12);
+  ASSERT_EQ(told.stretches.front().sizes.size(), 1U);
+  const Size& size = told.stretches.front().sizes.front();
+  EXPECT_NEAR(size.size, -0.6, 1e-12);
+  EXPECT_NEAR(size.lo, -0.6 - 0.0164485, 1e-6);  // 1.645 sd: 90 %
+  EXPECT_NEAR(size.hi, -0.6 + 0.0164485, 1e-6);
 }
 
 TEST(Stretches, SilenceIsAKindOfItsOwn) {
@@ -158,26 +171,98 @@ TEST(Stretches, AFirstEstimateThatIsNotSoundIsTold) { EXPECT_EQ(follow("oo").cha
 
 TEST(Stretches, TimesThatFallAreIgnored) {
   Stretches stretches(1, kS);
-  const std::vector<ChannelView> offset{view('o', 0.0)};
-  const std::vector<ChannelView> sound{view('s', 0.0)};
-  stretches.add(10 * kS, sound, {}, {});
-  stretches.add(5 * kS, offset, {}, {});
+  stretches.add(at(10 * kS, 's'), {});
+  stretches.add(at(5 * kS, 'o'), {});
   EXPECT_TRUE(stretches.finish().empty());
 }
 
 TEST(Stretches, WhatIsKeptIsBounded) {
   Stretches stretches(1, kS);
-  const std::vector<ChannelView> offset{view('o', 0.0)};
-  const std::vector<ChannelView> sound{view('s', 0.0)};
   TimeNs t = 0;
   for (std::size_t i = 0; i < Stretches::kMost + 7; ++i) {
-    stretches.add(t, offset, {}, {});
-    stretches.add(t + kS, sound, {}, {});
-    stretches.add(t + 2 * kS, sound, {}, {});
+    stretches.add(at(t, 'o'), {});
+    stretches.add(at(t + kS, 's'), {});
+    stretches.add(at(t + 2 * kS, 's'), {});
     t += 3 * kS;
   }
   EXPECT_EQ(stretches.finish().size(), Stretches::kMost);
   EXPECT_EQ(stretches.left_out(), 7U);
+}
+
+TEST(Stretches, GrownNoiseIsAKindOfItsOwn) {
+  const Told told = follow("ssnnnssssss");
+  EXPECT_EQ(told.changes, (Lines{"2 noisy", "5 sound"}));
+  ASSERT_EQ(told.stretches.size(), 1U);
+  EXPECT_STREQ(kind_name(told.stretches.front().kind), "noisy");
+  ASSERT_EQ(told.stretches.front().sizes.size(), 1U);
+  EXPECT_EQ(told.stretches.front().sizes[0].size, 0.4);
+  EXPECT_EQ(told.stretches.front().sizes[0].lo, 0.8 * 0.4);
+  const std::vector<std::string> names{"m"};
+  EXPECT_EQ(stretches_text(told.stretches, 0, names, names, [](TimeNs t) { return std::to_string(t / kS); }),
+            "Stretches in which a channel was not sound:\n"
+            "  m: from 2 to 5, noisy, up to 0.40 m (90 %: 0.32 to 0.48), 100 % at its surest\n");
+}
+
+// The engine says when a spell began, which is before it came to believe in it; not before the one before.
+TEST(Stretches, BeginWhenTheEngineSaysThatTheyDid) {
+  Stretches stretches(1, 5 * kS);
+  const std::string kinds = "sssoossssssoo";
+  for (std::size_t i = 0; i < kinds.size(); ++i) {
+    engine::Estimate estimate = at(static_cast<TimeNs>(i) * kS, kinds[i]);
+    estimate.channels[0].unsound_since_ns = kS;
+    stretches.add(estimate, {});
+    EXPECT_EQ(stretches.since(0), i < 3 ? 0 : i < 5 ? 3 * kS : i < 11 ? 0 : 11 * kS) << i;
+  }
+  const std::vector<Stretch> all = stretches.finish();
+  ASSERT_EQ(all.size(), 2U);
+  EXPECT_EQ(all[0].from_ns, 1 * kS);
+  EXPECT_EQ(all[1].from_ns, all[0].to_ns);
+}
+
+TEST(Stretches, AskForTheFullEstimateAndTheRivalWhereTheyAreSurest) {
+  Stretches stretches(1, 5 * kS);
+  engine::Estimate full;
+  int asked = 0;
+  Stretches::Calls calls;
+  calls.full = [&]() -> const engine::Estimate& { return full; };
+  calls.rival = [&](int) {
+    ++asked;
+    return Rival{"radar creeping", 0.07};
+  };
+  for (TimeNs t = 0; t < 20; ++t) {
+    const engine::Estimate estimate = at(t * kS, t < 10 ? 's' : 't');
+    full = estimate;
+    full.explanations.push_back({0.9, {{0, engine::Condition::kStuck, 1.5, 0.1}}});
+    stretches.add(estimate, calls);
+  }
+  EXPECT_EQ(asked, 1);
+  const std::vector<Stretch> all = stretches.finish();
+  ASSERT_EQ(all.size(), 1U);
+  EXPECT_EQ(all[0].rival.words, "radar creeping");
+  EXPECT_EQ(all[0].rival.probability, 0.07);
+  ASSERT_EQ(all[0].sizes.size(), 1U);
+  EXPECT_EQ(all[0].sizes[0].size, 1.5);
+}
+
+TEST(Stretches, OfAVectorChannelHaveASizeForEachPart) {
+  Stretches stretches(1, 5 * kS);
+  for (TimeNs t = 0; t < 9; ++t) {
+    engine::Estimate estimate = at(t * kS, t < 3 ? 's' : 'o', 0.1);
+    estimate.channels[0].others.push_back({1.0, {}, t == 5 ? -3.0 : -2.0, 0.5});
+    stretches.add(estimate, {});
+  }
+  const std::vector<Stretch> all = stretches.finish();
+  ASSERT_EQ(all.size(), 1U);
+  ASSERT_EQ(all[0].sizes.size(), 2U);
+  EXPECT_EQ(all[0].sizes[0].size, 0.1);
+  EXPECT_EQ(all[0].sizes[1].size, -3.0) << "the largest, all parts together";
+}
+
+TEST(Stretches, MayKeepNoneAndStillSaySinceWhen) {
+  Stretches stretches(1, kS, 0);
+  stretches.add(at(kS, 'o'), {});
+  EXPECT_EQ(stretches.since(0), kS);
+  EXPECT_TRUE(stretches.finish().empty());
 }
 
 TEST(StretchesText, NamesWhenWhatAndHowSure) {
@@ -187,10 +272,11 @@ TEST(StretchesText, NamesWhenWhatAndHowSure) {
   const auto time = [](TimeNs t) { return std::to_string(t / kS); };
   EXPECT_EQ(stretches_text(told.stretches, 2, names, units, time),
             "Stretches in which a channel was not sound:\n"
-            "  sonic: from 3 to 7, offset, up to +0.300 ± 0.010 m, 90 % at its surest (not sound: 98 %)\n"
+            "  sonic: from 3 to 7, offset, up to +0.300 m (90 %: +0.284 to +0.316), 90 % at its surest (not "
+            "sound: 98 %)\n"
             "  … and 2 more\n");
   EXPECT_EQ(stretches_text({}, 0, names, units, time), "Every channel was sound throughout.\n");
 }
 
 }  // namespace
-}  // namespace steelyard::client
+}  // namespace steelyard::timeline
