@@ -4,7 +4,7 @@
 
 #include "engine/cases.h"
 #include "engine/engine.h"
-#include "suite/plant.h"
+#include "suite/random.h"
 
 namespace steelyard::engine {
 namespace {
