@@ -15,7 +15,10 @@ namespace steelyard::engine {
 double Births::rate(Condition from, Condition to, const ChannelModel& c) const {
   if (from == to && from != Condition::kStuck) return 0.0;  // stuck → stuck: a new level
   if (from == Condition::kSound) return 1.0 / (3.0 * c.fails_every_s);
-  if (to == Condition::kSound) return 1.0 / c.recovers_in_s;
+  // A value that moves again is the end of a freeze, and what was frozen is then most often well: were only
+  // the walks quick to follow, a channel that froze with others of its source would come out of it as
+  // unsound.
+  if (to == Condition::kSound) return 1.0 / (from == Condition::kFrozen ? c.changes_in_s : c.recovers_in_s);
   const bool was_dead = from == Condition::kStuck || from == Condition::kFrozen;
   return (was_dead && is_walk(to) ? 0.5 : 1.0) / c.changes_in_s;
 }
@@ -26,12 +29,15 @@ bool Births::possible(Condition to, const Occasion& o) const {
   return o.censoring == Censoring::kBetween || (o.repeated && o.censoring == Censoring::kNone);
 }
 
+// A long gap before a reading says little about when a fault struck: births are bounded to one response.
+// Before its first reading a channel may have failed at any time, and not have recovered since.
 int Births::switches(const Hypothesis& parent, const Occasion& o, double alone_share,
                      std::array<Switch, kConditions>& out, double& stays) const {
   const auto& c = model_.channels[static_cast<std::size_t>(o.channel)];
   const Condition from = parent.conditions.of(o.channel);
-  // A long gap before a reading says little about when a fault struck: births are bounded to one response.
-  const double gap_s = from == Condition::kSound ? std::min(o.gap_s, model_.response_s) : o.gap_s;
+  const double gap_s = o.first                     ? model_.response_s
+                       : from == Condition::kSound ? std::min(o.gap_s, model_.response_s)
+                                                   : o.gap_s;
   std::array<double, kConditions> rates{};
   double total = 0.0;
   for (int k = 0; k < kConditions; ++k) {
@@ -56,7 +62,7 @@ int Births::switches(const Hypothesis& parent, const Occasion& o, double alone_s
 double Births::bear(const Hypothesis& parent, const Occasion& o, const Walks& walks, double log_floor,
                     Pool& children, std::span<const Group> groups, std::span<const double> last_values) {
   double stays = 1.0;
-  if (o.first) return stays;
+  if (o.first && !model_.options.born_faulty) return stays;
   double together = 0.0;
   for (const Group& g : groups)
     if (!g.freezes_only) together += g.share;
@@ -65,7 +71,7 @@ double Births::bear(const Hypothesis& parent, const Occasion& o, const Walks& wa
   for (int i = 0; i < count; ++i)
     if (to[static_cast<std::size_t>(i)].log_weight >= log_floor)
       bear(parent, o, to[static_cast<std::size_t>(i)], walks, children);
-  if (parent.conditions.of(o.channel) == Condition::kSound)
+  if (parent.conditions.of(o.channel) == Condition::kSound && !o.first)
     for (const Group& g : groups) bear_together(parent, o, g, walks, last_values, log_floor, children);
   return stays;
 }

@@ -151,6 +151,7 @@ struct Options {
   bool cap_precision = true;  ///< false: a channel may be learned to be better than its datasheet
   bool forget = true;         ///< false: memory is infinite
   bool learn_walk = true;     ///< false: offsets walk at the fixed speeds of their conditions
+  bool born_faulty = true;    ///< false: every channel is sound at its first reading
   bool use_repeats = true;    ///< false: exact repeats are not evidence
   std::array<bool, kConditions> conditions{true, true, true, true, true, true};
 };

@@ -16,7 +16,7 @@ namespace {
 constexpr std::array<double, kConditions> kWalk{0.0, 0.02, 3.5, 30.0, 0.05, 0.0};
 // A creeping channel's rate: its size at first in datasheet sd per R, and its own walk in that per √R.
 constexpr double kFirstRate = 1.0;
-constexpr double kRateWalk = 0.1;
+constexpr double kRateWalk = 0.03;
 
 int children_capacity(const Model& m) {
   return std::max(1, m.options.parents * Births::most_children(static_cast<int>(m.common.size()) + 1));

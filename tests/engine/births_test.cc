@@ -201,8 +201,16 @@ TEST(Switches, OnlyToWhatIsAllowed) {
   expect_switches(n, {{C::kOffset, kFails}});
 }
 
-TEST(Switches, NoneAtAFirstReading) {
+TEST(Switches, BeforeAFirstReadingAFaultHasHadOneResponse) {
   Nursery n(6, {}, false);
+  n.occasion.first = true;
+  n.bear();
+  EXPECT_NEAR(n.stays, std::exp(-4.0 * kFails * n.scene->model->response_s), 1e-14);
+}
+
+TEST(Switches, NoneAtAFirstReadingWhereChannelsAreBornSound) {
+  Nursery n(6, {}, false);
+  n.scene->model->options.born_faulty = false;
   n.occasion.first = true;
   n.bear();
   EXPECT_EQ(n.stays, 1.0);

@@ -18,6 +18,7 @@ engine::Engine two_switching_channels() {
   engine::Model model = kalman_model();
   const auto offset = static_cast<std::size_t>(engine::Condition::kOffset);
   model.options.conditions[offset] = true;
+  model.options.born_faulty = false;
   // The offset there is constant: walk speeds fall with the response time. Nothing else here depends on it.
   model.response_s = 1e15;
   model.states = {state("x", 20.0, 1.0, 0.05, {0.0})};
