@@ -142,9 +142,9 @@ double Likelihood::repeat_probability(const Occasion& o, double noise_variance) 
 }
 
 // The true value lies beyond a bound, or between two: the state moves by the moments of a normal that is cut
-// off there (Tobin 1958). The noise learns from what lies beyond the range: were it to learn from the
-// readings inside alone, it would see the tails only. Silence of an on-change source teaches no noise: how
-// often it was heeded is ours to choose.
+// off there (Tobin 1958). The noise learns too: were it to learn from the readings inside the range alone, it
+// would see the tails only, and from the reports of an on-change source alone, just the noise that made it
+// report.
 Absorbed Likelihood::absorb_censored(Hypothesis& h, const Occasion& o, double r) {
   const double below = o.censoring == Censoring::kBelow ? -INFINITY : o.bound - expected_.mean;
   const double above = o.censoring == Censoring::kBelow   ? o.bound - expected_.mean
@@ -164,8 +164,7 @@ Absorbed Likelihood::absorb_censored(Hypothesis& h, const Occasion& o, double r)
     const Truncated t = cut(total);
     return total * std::max(1.0 - t.shrink + t.mean * t.mean, 0.0);
   };
-  if (o.censoring != Censoring::kBetween)
-    r = learn(h.noise[o.channel], s, r, expected_.spec_variance, step.weight, second_moment);
+  r = learn(h.noise[o.channel], s, r, expected_.spec_variance, step.weight, second_moment);
   step.total_variance = s + r;
   const Truncated t = cut(step.total_variance);
   step.shift = t.mean * std::sqrt(step.total_variance);

@@ -131,7 +131,7 @@ void set_defaults(ChannelModel& channel, double response_s) {
 void set_defaults(Model& model, double response_s) {
   model.response_s = response_s;
   model.jolt = {true, 20.0 * response_s, 1.5 * response_s, 4.5};
-  model.still = {true, 20.0 * response_s, 10.0 * response_s, 0.25};
+  model.still = {true, 20.0 * response_s, 10.0 * response_s, 0.15};
   for (auto& channel : model.channels) set_defaults(channel, response_s);
 }
 
