@@ -28,8 +28,8 @@ enum class Condition : std::uint8_t { kSound, kCreeping, kOffset, kWandering, kS
 inline constexpr int kConditions = 6;
 
 /// How much unknown disturbance the machine is under at present.
-enum class Mode : std::uint8_t { kStill, kUsual, kJolted };
-inline constexpr int kModes = 3;
+enum class Mode : std::uint8_t { kResting, kStill, kUsual, kJolted };
+inline constexpr int kModes = 4;
 
 /// What the source says of its own reading. Only good and uncertain readings are fused.
 enum class Quality : std::uint8_t { kGood, kUncertain, kBad, kOutOfService, kSimulated };
@@ -133,7 +133,8 @@ struct CommonCause {
   double share = 0.1;
 };
 
-/// A machine mode beside the usual one: entered every `every_s`, left after `last_s`, unrest × `times`.
+/// A machine mode beside the usual one: entered every `every_s`, left after `last_s`, unrest × `times`. A still machine
+/// comes to rest as a usual one comes to be still: at the same rates, unrest × `times`² in all.
 struct ModeModel {
   bool on = true;
   double every_s = 20.0;

@@ -42,7 +42,8 @@ Motion::Motion(const Model& model, const Layout& layout)
       rate_(i, k) = affine->on_inputs[static_cast<std::size_t>(k - layout.states)];
     drive_(i) = affine->constant;
   }
-  mode_factor_ = {model.still.times * model.still.times, 1.0, model.jolt.times * model.jolt.times};
+  const double still = model.still.times * model.still.times;
+  mode_factor_ = {still * still, still, 1.0, model.jolt.times * model.jolt.times};
   rows_.resize(static_cast<std::size_t>(n * layout.max_dim));
 }
 

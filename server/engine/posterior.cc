@@ -38,7 +38,7 @@ Posterior::Posterior(std::shared_ptr<const Model> m)
       children(layout, children_capacity(*model)),
       channels(model->channels.size()),
       inputs(model->inputs.size()) {
-  mode_on = {model->still.on, true, model->jolt.on};
+  mode_on = {model->still.on, model->still.on, true, model->jolt.on};
   absorbed.resize(static_cast<std::size_t>(now.capacity()));
   Hypothesis& h = now.append();
   h.own_at.fill(-1);
@@ -130,15 +130,20 @@ void Posterior::split_modes(double dt_s) {
     const auto link = [&](Mode from, Mode to, double every_s) {
       chain.rate(static_cast<int>(from), static_cast<int>(to)) = 1.0 / every_s;
     };
-    if (mode_on[0]) {
+    if (model->still.on) {
       link(Mode::kUsual, Mode::kStill, model->still.every_s);
       link(Mode::kStill, Mode::kUsual, model->still.last_s);
+      link(Mode::kStill, Mode::kResting, model->still.every_s);
+      link(Mode::kResting, Mode::kStill, model->still.last_s);
     }
-    if (mode_on[2]) {
+    if (model->jolt.on) {
       link(Mode::kUsual, Mode::kJolted, model->jolt.every_s);
       link(Mode::kJolted, Mode::kUsual, model->jolt.last_s);
     }
-    if (mode_on[0] && mode_on[2]) link(Mode::kStill, Mode::kJolted, model->jolt.every_s);
+    if (model->still.on && model->jolt.on) {
+      link(Mode::kStill, Mode::kJolted, model->jolt.every_s);
+      link(Mode::kResting, Mode::kJolted, model->jolt.every_s);
+    }
     for (int i = 0; i < kModes; ++i) chain.rate(i, i) = -chain.rate.row(i).sum();
     Transition moved;
     discretise(chain, dt_s, moved);

@@ -22,7 +22,7 @@ void fill(Scene& scene, Random& random) {
     const auto condition = static_cast<Condition>(static_cast<int>(random.uniform() * 4));
     Hypothesis& h = condition == Condition::kSound ? scene.random_hypothesis(random)
                                                    : scene.random_hypothesis(random, {{1, condition}});
-    h.mode = static_cast<Mode>(static_cast<int>(random.uniform() * 3));
+    h.mode = static_cast<Mode>(static_cast<int>(random.uniform() * kModes));
   }
 }
 

@@ -82,27 +82,30 @@ double PriorMachine::draw_noise_sd(int j) {
   return spec_sd(j) / std::sqrt(std::min(kappa, 1.0));
 }
 
-// Usual ↔ still, usual ↔ jolted, still → jolted, by competing risks over the step.
+// Usual ↔ still ↔ resting, usual ↔ jolted, still and resting → jolted, by competing risks over the step.
 void PriorMachine::switch_mode(double dt_s) {
   const double to_jolted = mode_ == Mode::kJolted ? 0.0 : 1.0 / model_.jolt.every_s;
-  double other = 0.0;
-  if (mode_ == Mode::kUsual) other = 1.0 / model_.still.every_s;
-  if (mode_ == Mode::kStill) other = 1.0 / model_.still.last_s;
-  if (mode_ == Mode::kJolted) other = 1.0 / model_.jolt.last_s;
-  const double total = to_jolted + other;
+  double calmer = 0.0;
+  double livelier = 0.0;
+  if (mode_ == Mode::kUsual || mode_ == Mode::kStill) calmer = 1.0 / model_.still.every_s;
+  if (mode_ == Mode::kStill || mode_ == Mode::kResting) livelier = 1.0 / model_.still.last_s;
+  if (mode_ == Mode::kJolted) calmer = 1.0 / model_.jolt.last_s;
+  const double total = to_jolted + calmer + livelier;
   if (!random_.chance(-std::expm1(-total * dt_s))) return;
   if (random_.chance(to_jolted / total)) {
     mode_ = Mode::kJolted;
   } else {
-    mode_ = mode_ == Mode::kUsual ? Mode::kStill : Mode::kUsual;
+    const int step = random_.chance(calmer / (calmer + livelier)) ? -1 : 1;
+    mode_ = static_cast<Mode>(static_cast<int>(mode_) + step);
   }
 }
 
 // Constant speed under white acceleration, exactly: its integrals over dt by their joint covariance.
 void PriorMachine::move(double dt_s) {
-  const double times = mode_ == Mode::kJolted  ? model_.jolt.times
-                       : mode_ == Mode::kStill ? model_.still.times
-                                               : 1.0;
+  const double times = mode_ == Mode::kJolted    ? model_.jolt.times
+                       : mode_ == Mode::kUsual   ? 1.0
+                       : mode_ == Mode::kResting ? model_.still.times * model_.still.times
+                                                 : model_.still.times;
   const double q = model_.states[1].unrest * times;
   const double n1 = random_.normal();
   const double n2 = random_.normal();

@@ -15,8 +15,9 @@ bool Row::misdeclares(int channel) const {
   if (!declared.sd_factors.empty() && declared.sd_factors[j] < 1.0) return true;
   return std::any_of(traits.begin(), traits.end(), [&](const Trait& t) {
     if (t.channel != channel) return false;
+    // A declared correlation tells of a damping's noise, not of the lag that the damping has as well.
     return (t.field == &Channel::deadband && !declared.on_change) || t.field == &Channel::holds ||
-           (t.field == &Channel::damping_s && !declared.correlation) ||
+           t.field == &Channel::damping_s ||
            (t.field == &Channel::time_jitter_s && !declared.time_sd);
   });
 }
