@@ -99,6 +99,7 @@ double left_between(std::size_t i, std::size_t k) {
 engine::ChannelModel all_gauges() {
   engine::ChannelModel all = gauge(kStations[0]);
   all.name = "gauges";
+  all.correlation = 0.0;  // in time: for scalar channels alone
   for (std::size_t i = 0; i < kStations.size(); ++i) {
     engine::PartModel part = gauge(kStations[i]);
     part.reads = AffineForm{{kStations[i].loading[0]}, {}, kStations[i].mean};

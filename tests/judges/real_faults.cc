@@ -1,14 +1,16 @@
 // SPDX-License-Identifier: Apache-2.0
 // Real readings with one injected fault at a time: when was it noticed, was the right channel blamed, and how
 // far did the estimate stray from that of the same readings without the fault?
-//   real_faults [--set 0|1|2|3] [--whole 1] [--known 1] [--json FILE]
+//   real_faults [--set 0|1|2|3] [--whole 1] [--victims N] [--known 1] [--json FILE]
 // --set 0: all, 1: thermometers, 2: wind, 3: wind as one vector channel. --whole 0 stops the fault-free run
 // where the faults begin to be done.
 #include <algorithm>
 #include <cmath>
 #include <cstdio>
 #include <cstring>
+#include <exception>
 #include <fstream>
+#include <span>
 #include <string>
 #include <vector>
 
@@ -191,15 +193,21 @@ void require(const Outcome& o, Bounds& bounds) {
                                o.error_sd, o.told_sd));
 }
 
-void judge_field(const Field& field, bool whole, Bounds& bounds, std::vector<Outcome>& all) {
+struct Extent {
+  bool whole = false;  ///< run the fault-free readings to their end
+  int victims = 2;     ///< channels that get faults
+};
+
+void judge_field(const Field& field, const Extent& extent, Bounds& bounds, std::vector<Outcome>& all) {
   std::size_t rows = field.onset;
   for (const auto& f : field.faults)
     rows = std::max(rows, field.onset + static_cast<std::size_t>(f.days / field.period_days));
-  if (whole) rows = field.shown.size();
+  if (extent.whole) rows = field.shown.size();
   const Base base = fault_free(field, field.model, rows);
   const Base simple = fault_free(field, plain(*field.model), rows);
   print_fault_free(field, base.track);
-  for (const int victim : field.victims) {
+  const auto victims = std::min(field.victims.size(), static_cast<std::size_t>(std::max(1, extent.victims)));
+  for (const int victim : std::span(field.victims).first(victims)) {
     for (const auto& fault : field.faults) {
       const Track track = spoiled(base.at_onset, field, fault, victim);
       Outcome o = judge_track(field, track, base.track, victim);
@@ -257,16 +265,20 @@ std::string json_path(int& argc, char** argv) {
 }  // namespace
 }  // namespace steelyard::judges
 
-int main(int argc, char** argv) {
+int main(int argc, char** argv) try {
   using namespace steelyard::judges;
   const std::string path = json_path(argc, argv);
-  const Numbers options(argc, argv, {{"set", 0.0}, {"whole", 0.0}, {"known", 0.0}});
+  const Numbers options(argc, argv, {{"set", 0.0}, {"whole", 0.0}, {"victims", 2.0}, {"known", 0.0}});
   Bounds bounds(options["known"] != 0.0);
   std::vector<Outcome> all;
-  const bool whole = options["whole"] != 0.0;
-  if (options.whole("set") < 2) judge_field(thermometers(), whole, bounds, all);
-  if (options.whole("set") == 0 || options.whole("set") == 2) judge_field(wind(), whole, bounds, all);
-  if (options.whole("set") == 0 || options.whole("set") == 3) judge_field(wind_vector(), whole, bounds, all);
+  const int set = options.whole("set");
+  const Extent extent{options["whole"] != 0.0, options.whole("victims")};
+  if (set == 0 || set == 1) judge_field(thermometers(), extent, bounds, all);
+  if (set == 0 || set == 2) judge_field(wind(), extent, bounds, all);
+  if (set == 0 || set == 3) judge_field(wind_vector(), extent, bounds, all);
   if (!path.empty() && !write_json(path, all)) return 1;
   return bounds.exit_code();
+} catch (const std::exception& e) {
+  std::fprintf(stderr, "real_faults: %s\n", e.what());
+  return 2;
 }
