@@ -74,7 +74,72 @@ engine::ChannelModel gauge(const Station& station) {
   c.hi = 8.0;
   c.resolution = 0.0075;  // a 24th of a knot, at the winds that are usual
   c.period_s = kDayS;
+  c.correlation = 0.3;  // of what is the station's own, from day to day
   return c;
+}
+
+std::vector<std::vector<double>> shown_by_stations() {
+  const auto table = outside::Csv::open("irish_wind.csv");
+  std::vector<std::vector<double>> out;
+  for (std::size_t i = 0; i < table.rows(); ++i) {
+    out.emplace_back();
+    for (const auto& station : kStations) out.back().push_back(table.number(i, station.name));
+  }
+  return out;
+}
+
+// Covariance of what the first state leaves: the other three states' and the stations' own.
+double left_between(std::size_t i, std::size_t k) {
+  double sum = i == k ? kStations[i].sd * kStations[i].sd : 0.0;
+  for (std::size_t s = 1; s < kWindStates.size(); ++s)
+    sum += kStations[i].loading[s] * kStations[k].loading[s];
+  return sum;
+}
+
+engine::ChannelModel all_gauges() {
+  engine::ChannelModel all = gauge(kStations[0]);
+  all.name = "gauges";
+  all.correlation = 0.0;  // in time: for scalar channels alone
+  for (std::size_t i = 0; i < kStations.size(); ++i) {
+    engine::PartModel part = gauge(kStations[i]);
+    part.reads = AffineForm{{kStations[i].loading[0]}, {}, kStations[i].mean};
+    part.sd = std::sqrt(left_between(i, i));
+    if (i == 0) {
+      static_cast<engine::PartModel&>(all) = part;
+    } else {
+      all.others.push_back(part);
+    }
+    for (std::size_t k = i + 1; k < kStations.size(); ++k)
+      all.part_correlation.push_back(left_between(i, k) / std::sqrt(left_between(i, i) * left_between(k, k)));
+  }
+  return all;
+}
+
+Field wind_field(const char* name, std::shared_ptr<engine::Model> model) {
+  engine::set_defaults(*model, kDayS);
+  for (auto& c : model->channels) c.fails_every_s = 5.0 * 365.25 * kDayS;
+  Field field;
+  field.name = name;
+  field.unit = "knot";
+  field.model = std::move(model);
+  field.shown = shown_by_stations();
+  field.first = 1461;
+  field.onset = 1461 + 365;
+  field.victims = {8, 3};  // Mullingar, among others inland; Kilkenny
+  field.faults = {{Kind::kOffset, 4.0, 365, "offset 4 kn"},
+                  {Kind::kDrift, 6.0 / 365.0, 730, "drift 6 kn a year"},
+                  {Kind::kFreeze, 0.0, 60, "frozen"},
+                  {Kind::kNoise, 4.0, 365, "noise 4 kn"},
+                  {Kind::kScale, 0.6, 365, "scale x0.6"}};
+  field.square_root = true;
+  return field;
+}
+
+engine::StateModel wind_state(std::size_t k, std::size_t states) {
+  const double rate = -std::log(kDayToDay[k]) / kDayS;
+  std::vector<double> pull(states, 0.0);
+  pull[k] = -rate;
+  return state(kWindStates[k], 0.0, 1.0, std::sqrt(2.0 * rate), pull);
 }
 
 }  // namespace
@@ -112,42 +177,31 @@ Field thermometers() {
 
 Field wind() {
   auto model = std::make_shared<engine::Model>();
-  for (std::size_t k = 0; k < kWindStates.size(); ++k) {
-    const double rate = -std::log(kDayToDay[k]) / kDayS;
-    std::vector<double> pull(kWindStates.size(), 0.0);
-    pull[k] = -rate;
-    model->states.push_back(state(kWindStates[k], 0.0, 1.0, std::sqrt(2.0 * rate), pull));
-  }
+  for (std::size_t k = 0; k < kWindStates.size(); ++k)
+    model->states.push_back(wind_state(k, kWindStates.size()));
   for (const auto& station : kStations) model->channels.push_back(gauge(station));
-  engine::set_defaults(*model, kDayS);
-  for (auto& c : model->channels) c.fails_every_s = 5.0 * 365.25 * kDayS;
-  Field field;
-  field.name = "wind";
-  field.unit = "knot";
-  field.model = model;
-  const auto table = outside::Csv::open("irish_wind.csv");
-  for (std::size_t i = 0; i < table.rows(); ++i) {
-    std::vector<double> row;
-    for (const auto& station : kStations) row.push_back(table.number(i, station.name));
-    field.shown.push_back(std::move(row));
-  }
-  field.first = 1461;
-  field.onset = 1461 + 365;
-  field.victims = {8, 3};  // Mullingar, among others inland; Kilkenny
-  field.faults = {{Kind::kOffset, 4.0, 365, "offset 4 kn"},
-                  {Kind::kDrift, 6.0 / 365.0, 730, "drift 6 kn a year"},
-                  {Kind::kFreeze, 0.0, 60, "frozen"},
-                  {Kind::kNoise, 4.0, 365, "noise 4 kn"},
-                  {Kind::kScale, 0.6, 365, "scale x0.6"}};
-  field.square_root = true;
+  return wind_field("wind", model);
+}
+
+Field wind_vector() {
+  auto model = std::make_shared<engine::Model>();
+  model->states.push_back(wind_state(0, 1));
+  model->channels.push_back(all_gauges());
+  Field field = wind_field("wind as a vector", model);
+  field.one_vector = true;
   return field;
 }
 
-double as_read(const Field& field, std::size_t channel, double shown) {
-  const auto& c = field.model->channels[channel];
-  if (field.square_root) return std::clamp(std::sqrt(std::max(shown, 0.0)), c.lo, c.hi);
-  const double rounded = c.resolution > 0.0 ? std::round(shown / c.resolution) * c.resolution : shown;
-  return std::clamp(rounded, c.lo, c.hi);
+std::string sensor_name(const Field& field, std::size_t column) {
+  return field.one_vector ? kStations[column].name : field.model->channels[column].name;
+}
+
+double as_read(const Field& field, std::size_t column, double shown) {
+  const auto& channels = field.model->channels;
+  const engine::PartModel& part =
+      field.one_vector ? channels[0].part(static_cast<int>(column)) : channels[column];
+  if (field.square_root) return std::clamp(std::sqrt(std::max(shown, 0.0)), part.lo, part.hi);
+  return std::clamp(std::round(shown / part.resolution) * part.resolution, part.lo, part.hi);
 }
 
 }  // namespace steelyard::judges

@@ -28,13 +28,18 @@ struct Field {
   /// wander.
   std::vector<int> victims;
   std::vector<Fault> faults;
+  bool one_vector = false;   ///< what is shown are the parts of one vector channel, not channels of their own
   bool square_root = false;  ///< the rig reads the square root of what is shown
 };
 
 [[nodiscard]] Field thermometers();
 [[nodiscard]] Field wind();
+/// The same gauges as the parts of one vector channel: their noise is correlated as the three lesser states
+/// of wind() make it, and there is one state.
+[[nodiscard]] Field wind_vector();
+[[nodiscard]] std::string sensor_name(const Field& field, std::size_t column);
 
 /// What the engine is given for a shown value: rounded as the instrument does, within its range.
-[[nodiscard]] double as_read(const Field& field, std::size_t channel, double shown);
+[[nodiscard]] double as_read(const Field& field, std::size_t column, double shown);
 
 }  // namespace steelyard::judges
