@@ -223,10 +223,16 @@ class Report {
               "change of the machine");
     }
     if (!(model.period_s > 0.0)) caution(model.name + ": has no period, so its silence is not judged");
-    if (!(model.resolution > 0.0)) {
+    const auto every_part = [&model](double engine::PartModel::*what) {
+      for (int part = 0; part < model.parts(); ++part) {
+        if (!(model.part(part).*what > 0.0)) return false;
+      }
+      return true;
+    };
+    if (!every_part(&engine::PartModel::resolution)) {
       caution(model.name + ": has no resolution; exact repeats are judged as if it were sd/100");
     }
-    if (!(model.bias_sd > 0.0)) {
+    if (!every_part(&engine::PartModel::bias_sd)) {
       caution(model.name + ": has no bias_sd, so a standing difference from the others counts as a fault");
     }
     if (model.delay_s > 0.0)
