@@ -1,59 +1,21 @@
 // SPDX-License-Identifier: Apache-2.0
 // steelyard check: says what a rig means, for the person who wrote it.
 #include <algorithm>
-#include <array>
-#include <charconv>
 #include <iterator>
 #include <memory>
 #include <string>
-#include <system_error>
 #include <utility>
 #include <vector>
 
+#include "cli/accuracy.h"
 #include "cli/commands.h"
 #include "cli/files.h"
 #include "cli/observe.h"
 #include "cli/output.h"
+#include "cli/report_text.h"
 
 namespace steelyard::client {
 namespace {
-
-constexpr double kHour_s = 3600.0;
-constexpr double kDay_s = 86400.0;
-
-std::string digits(double value, int significant) {
-  std::array<char, 64> buffer;
-  const auto [end, error] = std::to_chars(buffer.data(), buffer.data() + buffer.size(), value,
-                                          std::chars_format::general, significant);
-  return error == std::errc() ? std::string(buffer.data(), end) : "?";
-}
-
-/// For people: six digits say all that a description can mean.
-std::string number(double value) { return digits(value, 6); }
-
-std::string with_unit(double value, const std::string& unit) {
-  return unit.empty() ? number(value) : number(value) + " " + unit;
-}
-
-std::string joined(const std::vector<std::string>& words, const char* none) {
-  if (words.empty()) return none;
-  std::string out;
-  for (const std::string& word : words) out += (out.empty() ? "" : ", ") + word;
-  return out;
-}
-
-std::string counted(std::size_t count, const char* what) {
-  return std::to_string(count) + " " + what + (count == 1 ? "" : "s");
-}
-
-/// A duration as it may be written in the rig and, beside it, in hours and days.
-std::string long_duration(double seconds) {
-  const std::string text = rig::duration_text(seconds);
-  std::vector<std::string> also;
-  if (!text.ends_with(" h")) also.push_back(digits(seconds / kHour_s, 4) + " h");
-  if (!text.ends_with(" d") && seconds >= kDay_s) also.push_back(digits(seconds / kDay_s, 4) + " d");
-  return also.empty() ? text : text + " (" + joined(also, "") + ")";
-}
 
 /// The whole report on one rig.
 class Report {
@@ -71,6 +33,8 @@ class Report {
     states();
     inputs();
     channels();
+    out_ += accuracy_text(rig_);
+    causes();
     modes();
     cautions();
     return std::move(out_);
@@ -128,13 +92,16 @@ class Report {
     const auto index = static_cast<std::size_t>(channel);
     const engine::ChannelModel& model = model_.channels[index];
     line("  " + title(index));
-    line("    reads        " + reading(index));
+    for (int part = 0; part < model.parts(); ++part) {
+      line((part == 0 ? "    reads        " : "                 ") + reading(index, part));
+    }
+    for (const std::string& manner : manners(model)) line("                 " + manner);
     line("    shows alone  " + shown_words({channel}));
     line("    without it   " + lost_words(channel));
     line("    faults       every " + long_duration(model.fails_every_s) + "; recovers in " +
          long_duration(model.recovers_in_s));
     line("                 changes in " + long_duration(model.changes_in_s) + "; offsets of the size of " +
-         with_unit(model.offset_size, model.unit) + "; strays " + number(model.strays));
+         offset_sizes(model) + "; strays " + number(model.strays));
     line("    noise        remembered for " + long_duration(model.memory_s) + "; the datasheet is worth " +
          number(model.prior_readings) + " readings");
     channel_cautions(channel);
@@ -150,19 +117,62 @@ class Report {
     return text;
   }
 
-  std::string reading(std::size_t index) const {
-    const engine::ChannelModel& model = model_.channels[index];
+  std::string reading(std::size_t index, int part) const {
+    const engine::ChannelModel& channel = model_.channels[index];
+    const engine::PartModel& model = channel.part(part);
     const bool affine = index < rig_.reading_is_affine.size() && rig_.reading_is_affine[index];
-    std::string text = affine ? "linear" : "not linear: by sigma points";
+    std::string text = channel.parts() > 1 ? channel.name + "." + std::to_string(part + 1) + ": " : "";
+    text += affine ? "linear" : "not linear: by sigma points";
     text += model.sd_formula ? ", sd by formula" : ", sd " + with_unit(model.sd, model.unit);
     text += ", standing bias " + number(model.bias_sd) + ", range " + number(model.lo) + " to " +
             with_unit(model.hi, model.unit);
     if (model.resolution > 0.0) text += ", resolution " + number(model.resolution);
-    if (model.cutoff) text += ", cutoff " + number(*model.cutoff);
-    if (model.modulo > 0.0) text += ", modulo " + number(model.modulo);
-    if (model.period_s > 0.0) text += ", period " + rig::duration_text(model.period_s);
-    if (model.delay_s > 0.0) text += ", delay " + rig::duration_text(model.delay_s);
+    if (part > 0) return text;
+    if (channel.cutoff) text += ", cutoff " + number(*channel.cutoff);
+    if (channel.modulo > 0.0) text += ", modulo " + number(channel.modulo);
+    if (channel.period_s > 0.0) text += ", period " + rig::duration_text(channel.period_s);
+    if (channel.delay_s > 0.0) text += ", delay " + rig::duration_text(channel.delay_s);
     return text;
+  }
+
+  /// What is declared of few channels, a line each.
+  static std::vector<std::string> manners(const engine::ChannelModel& model) {
+    std::vector<std::string> out;
+    if (model.correlation > 0.0) {
+      out.push_back("noise correlated by " + number(model.correlation) + " over a period");
+    }
+    if (!model.part_correlation.empty()) {
+      std::vector<std::string> pairs;
+      for (const double pair : model.part_correlation) pairs.push_back(number(pair));
+      out.push_back("noise of the parts correlated: " + joined(pairs, ""));
+    }
+    if (model.time_sd_s > 0.0) out.push_back("times uncertain by " + rig::duration_text(model.time_sd_s));
+    if (!model.on_change) return out;
+    std::string text = "sends when it has moved by " + with_unit(model.on_change->deadband, model.unit);
+    const double heartbeat_s = model.on_change->heartbeat_s;
+    text += heartbeat_s > 0.0 ? ", or after " + rig::duration_text(heartbeat_s) : ", may be quiet for ever";
+    out.push_back(text);
+    return out;
+  }
+
+  static std::string offset_sizes(const engine::ChannelModel& model) {
+    std::vector<std::string> sizes;
+    for (int part = 0; part < model.parts(); ++part) {
+      sizes.push_back(with_unit(model.part(part).offset_size, model.part(part).unit));
+    }
+    return joined(sizes, "");
+  }
+
+  void causes() {
+    line("\nfaults that strike together");
+    for (const engine::CommonCause& cause : model_.common) {
+      std::vector<std::string> names;
+      for (const int channel : cause.channels) {
+        names.push_back(model_.channels[static_cast<std::size_t>(channel)].name);
+      }
+      line("  " + joined(names, "") + ": share " + number(cause.share) + " of their faults");
+    }
+    line("  channels of one source: share " + number(model_.freeze_share) + " of their freezes");
   }
 
   /// A state counts as shown if it is so at the start or near it.
@@ -213,10 +223,16 @@ class Report {
               "change of the machine");
     }
     if (!(model.period_s > 0.0)) caution(model.name + ": has no period, so its silence is not judged");
-    if (!(model.resolution > 0.0)) {
+    const auto every_part = [&model](double engine::PartModel::*what) {
+      for (int part = 0; part < model.parts(); ++part) {
+        if (!(model.part(part).*what > 0.0)) return false;
+      }
+      return true;
+    };
+    if (!every_part(&engine::PartModel::resolution)) {
       caution(model.name + ": has no resolution; exact repeats are judged as if it were sd/100");
     }
-    if (!(model.bias_sd > 0.0)) {
+    if (!every_part(&engine::PartModel::bias_sd)) {
       caution(model.name + ": has no bias_sd, so a standing difference from the others counts as a fault");
     }
     if (model.delay_s > 0.0)
@@ -271,9 +287,11 @@ int check(const std::string& path) {
 }  // namespace
 
 void add_check(CLI::App& app, Run& run) {
-  CLI::App* const command = app.add_subcommand(
-      "check",
-      "Say what a rig means: linear or not, what each channel shows, what is lost without it, the defaults");
+  CLI::App* const command =
+      app.add_subcommand("check",
+                         "Say what a rig means: linear or not, what each channel shows, what is lost without "
+                         "each channel and each "
+                         "pair and how well the rest knows the states, the settings in force");
   const auto path = std::make_shared<std::string>();
   command->add_option("RIG", *path, "Rig file (YAML)")->required()->type_name("FILE");
   command->callback([path, &run] { run = [path] { return check(*path); }; });

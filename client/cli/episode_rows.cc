@@ -47,7 +47,7 @@ void append_episode_rows(std::string& out, const Names& names, int parts, const 
     out += std::string(",") + timeline::kind_name(stretch.kind);
     append_size(out, stretch.sizes, part);
     out += ',';
-    append_number(out, stretch.probability);
+    append_number(out, stretch.then);
     out += "," + cell(stretch.rival.words) + ",";
     append_number(out, stretch.rival.probability);
     out += "," + std::to_string(episode.cause) + "\n";

@@ -15,7 +15,9 @@ void append_episode_header(std::string& out);
 
 /// One row; of a vector channel one for each part that has a size, named <channel>.1 and so on. What still
 /// lasts has an empty `to`. size: of creeping, offset and wandering the offset, of noisy the noise's sd, of
-/// stuck the level, with 90 % intervals; empty where there is none. `parts` of the channel.
+/// stuck the level, with 90 % intervals; empty where there is none. Probabilities are those of the time at
+/// which that size was seen: of the kind (of noisy: that the channel is sound else), and of the rival
+/// explanation. `parts` of the channel.
 void append_episode_rows(std::string& out, const Names& names, int parts, const timeline::Episode& episode,
                          TimeStyle style);
 

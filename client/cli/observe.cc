@@ -17,34 +17,17 @@ using Index = Eigen::Index;
 constexpr double kNegligible = 1e-6;  // numerical derivatives are good to about 1e-8
 constexpr double kStep = 1e-4;        // of start_sd, for those derivatives
 
-double law_value(const engine::Law& law, std::span<const double> states, std::span<const double> inputs) {
+double formula_value(const engine::Law& law, std::span<const double> states, std::span<const double> inputs) {
   if (const auto* formula = std::get_if<std::shared_ptr<engine::Formula>>(&law)) {
     return *formula ? (*formula)->evaluate(states, inputs, 0.0) : 0.0;
   }
   return 0.0;
 }
 
-/// Gradient with respect to the states, each in units of its start_sd.
-RowVectorXd gradient(const engine::Model& model, const engine::Law& law, std::vector<double> states,
-                     const std::vector<double>& inputs) {
-  RowVectorXd result = RowVectorXd::Zero(static_cast<Index>(states.size()));
-  for (std::size_t i = 0; i < states.size(); ++i) {
-    const double scale = model.states[i].start_sd;
-    double slope = 0.0;
-    if (const auto* affine = std::get_if<engine::AffineForm>(&law)) {
-      slope = i < affine->on_states.size() ? affine->on_states[i] : 0.0;
-    } else {
-      const double at = states[i];
-      const double step = kStep * scale;
-      states[i] = at + step;
-      const double above = law_value(law, states, inputs);
-      states[i] = at - step;
-      slope = (above - law_value(law, states, inputs)) / (2.0 * step);
-      states[i] = at;
-    }
-    // Where a formula has no finite slope (a square root at 0) this point tells nothing of it.
-    if (std::isfinite(slope)) result(static_cast<Index>(i)) = slope * scale;
-  }
+/// Slopes, each in units of the state's start_sd.
+RowVectorXd gradient(const engine::Model& model, const engine::Law& law, const Point& point) {
+  RowVectorXd result = slopes_of(model, law, point);
+  for (Index i = 0; i < result.size(); ++i) result(i) *= model.states[static_cast<std::size_t>(i)].start_sd;
   return result;
 }
 
@@ -66,25 +49,54 @@ bool extend(MatrixXd& space, const RowVectorXd& row) {
 
 }  // namespace
 
+RowVectorXd slopes_of(const engine::Model& model, const engine::Law& law, const Point& point) {
+  std::vector<double> states = point.states;
+  RowVectorXd result = RowVectorXd::Zero(static_cast<Index>(states.size()));
+  for (std::size_t i = 0; i < states.size(); ++i) {
+    double slope = 0.0;
+    if (const auto* affine = std::get_if<engine::AffineForm>(&law)) {
+      slope = i < affine->on_states.size() ? affine->on_states[i] : 0.0;
+    } else {
+      const double at = states[i];
+      const double step = kStep * model.states[i].start_sd;
+      states[i] = at + step;
+      const double above = formula_value(law, states, point.inputs);
+      states[i] = at - step;
+      slope = (above - formula_value(law, states, point.inputs)) / (2.0 * step);
+      states[i] = at;
+    }
+    // Where a formula has no finite slope (a square root at 0) this point tells nothing of it.
+    if (std::isfinite(slope)) result(static_cast<Index>(i)) = slope;
+  }
+  return result;
+}
+
 Linearised::Linearised(const engine::Model& model, const Point& point) {
-  const auto& [states, inputs] = point;
-  const auto n = static_cast<Index>(states.size());
+  const auto n = static_cast<Index>(point.states.size());
   motion_ = MatrixXd::Zero(n, n);
   for (Index i = 0; i < n; ++i) {
     const engine::StateModel& state = model.states[static_cast<std::size_t>(i)];
-    motion_.row(i) = gradient(model, state.rate, states, inputs) * (model.response_s / state.start_sd);
+    motion_.row(i) = gradient(model, state.rate, point) * (model.response_s / state.start_sd);
   }
-  reads_ = MatrixXd::Zero(static_cast<Index>(model.channels.size()), n);
-  for (Index j = 0; j < reads_.rows(); ++j) {
-    const RowVectorXd row =
-        gradient(model, model.channels[static_cast<std::size_t>(j)].reads, states, inputs);
-    if (row.norm() > 0.0) reads_.row(j) = row / row.norm();
+  row_of_.push_back(0);
+  for (const engine::ChannelModel& channel : model.channels) {
+    row_of_.push_back(row_of_.back() + channel.parts());
+  }
+  reads_ = MatrixXd::Zero(row_of_.back(), n);
+  for (std::size_t j = 0; j < model.channels.size(); ++j) {
+    for (int part = 0; part < model.channels[j].parts(); ++part) {
+      const RowVectorXd row = gradient(model, model.channels[j].part(part).reads, point);
+      if (row.norm() > 0.0) reads_.row(row_of_[j] + part) = row / row.norm();
+    }
   }
 }
 
 MatrixXd Linearised::shown_space(const std::vector<int>& channels) const {
   MatrixXd space(0, motion_.cols());
-  for (const int channel : channels) extend(space, reads_.row(channel));
+  for (const int channel : channels) {
+    const auto index = static_cast<std::size_t>(channel);
+    for (Index row = row_of_[index]; row < row_of_[index + 1]; ++row) extend(space, reads_.row(row));
+  }
   const double size = motion_.norm();
   // Rows that are added are followed on in turn; there are at most as many as states.
   for (Index i = 0; i < space.rows(); ++i) {
@@ -105,8 +117,13 @@ std::vector<bool> Linearised::shown_states(const std::vector<int>& channels) con
 }
 
 bool Linearised::foretold(int channel, const std::vector<int>& by) const {
-  const RowVectorXd row = reads_.row(channel);
-  return row.norm() > 0.0 && beyond(shown_space(by), row).norm() < 1e-4;
+  const MatrixXd space = shown_space(by);
+  const auto index = static_cast<std::size_t>(channel);
+  for (Index i = row_of_[index]; i < row_of_[index + 1]; ++i) {
+    const RowVectorXd row = reads_.row(i);
+    if (!(row.norm() > 0.0) || !(beyond(space, row).norm() < 1e-4)) return false;
+  }
+  return true;
 }
 
 Point start_of(const engine::Model& model) {

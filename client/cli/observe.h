@@ -18,6 +18,11 @@ struct Point {
   std::vector<double> inputs;
 };
 
+/// Slopes of a law with respect to the states, at the point; 0 where there is no finite slope. Not for
+/// concurrent use with other users of the model's formulas.
+[[nodiscard]] Eigen::RowVectorXd slopes_of(const engine::Model& model, const engine::Law& law,
+                                           const Point& point);
+
 /// The machine linearised at a point, in units of each state's start_sd and of the response time.
 class Linearised {
  public:
@@ -28,12 +33,13 @@ class Linearised {
   [[nodiscard]] Eigen::MatrixXd shown_space(const std::vector<int>& channels) const;
   /// By state: is it determined by these channels?
   [[nodiscard]] std::vector<bool> shown_states(const std::vector<int>& channels) const;
-  /// Do these channels tell what `channel` ought to read?
+  /// Do these channels tell what `channel` ought to read, in all its parts?
   [[nodiscard]] bool foretold(int channel, const std::vector<int>& by) const;
 
  private:
-  Eigen::MatrixXd motion_;  // states × states
-  Eigen::MatrixXd reads_;   // channels × states, rows of length 1 (or 0: reads no state here)
+  Eigen::MatrixXd motion_;            // states × states
+  Eigen::MatrixXd reads_;             // parts × states, rows of length 1 (or 0: reads no state here)
+  std::vector<Eigen::Index> row_of_;  // by channel, its first part's; one more for the end
 };
 
 /// The start, and a point near it that has no symmetry by chance and all inputs at work.

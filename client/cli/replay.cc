@@ -288,6 +288,9 @@ void add_replay(CLI::App& app, Run& run) {
           "it could have been, and which spells have one cause")
       ->type_name("FILE");
   command->footer(
+      "The parts of a vector channel stand in value, value2, … of a long log, in <name>.1, <name>.2, … of a "
+      "wide "
+      "one.\n"
       "A cell of the log that cannot be used refuses its own reading alone: the first 10 are shown, all are "
       "counted,\n"
       "and when everything else has been used and written the exit code is 2. A header that cannot be used "

@@ -14,7 +14,7 @@ namespace steelyard::rig {
 namespace {
 
 constexpr std::array<std::string_view, 2> kKeys{"channels", "share"};
-constexpr std::size_t kMostGroups = 32;
+constexpr auto kMostGroups = static_cast<std::size_t>(engine::kMaxCommon);
 
 using Names = std::vector<std::string_view>;
 

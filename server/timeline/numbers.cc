@@ -59,6 +59,7 @@ std::string percent(double probability) {
 }
 
 std::string age_words(double seconds) {
+  if (seconds < 2.0) return fixed(seconds, 1) + " s";
   if (seconds < 120.0) return fixed(std::floor(seconds), 0) + " s";
   if (seconds < 7200.0) return fixed(std::floor(seconds / 60.0), 0) + " min";
   if (seconds < 172800.0) return fixed(std::floor(seconds / 3600.0), 0) + " h";

@@ -29,7 +29,7 @@ inline constexpr double kHalf90 = 1.6448536269514722;
 /// "93 %"
 [[nodiscard]] std::string percent(double probability);
 
-/// "42 s", "5 min", "3 h", "4 d"
+/// "0.4 s", "42 s", "5 min", "3 h", "4 d"
 [[nodiscard]] std::string age_words(double seconds);
 
 }  // namespace steelyard::timeline

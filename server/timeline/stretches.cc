@@ -172,6 +172,7 @@ void Stretches::see(int channel, int kind, const engine::Estimate& estimate, dou
   const bool larger = probability >= seen.probability * kNearly && extent > seen.extent;
   if (surer || larger) {
     seen.extent = extent;
+    seen.then = probability;
     seen.since_ns = since_of(told, estimate);
     const bool needs_full = calls.full && !kind_has_offset(kind);
     seen.sizes = sizes_of(needs_full ? calls.full() : estimate, channel, kind);
@@ -194,7 +195,7 @@ void Stretches::close(int channel, bool open) {
   const TimeNs from = std::min(one.from_ns, since);
   if (done_.size() < most_) {
     done_.push_back({channel, from, one.to_ns, open, brief, kind, most->probability, one.unsound,
-                     std::move(most->sizes), std::move(most->rival)});
+                     std::move(most->sizes), most->then, std::move(most->rival)});
   } else {
     ++left_out_;
   }

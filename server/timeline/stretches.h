@@ -58,7 +58,8 @@ struct Stretch {
   double unsound = 0.0;      ///< the highest P(not sound, or silent)
   /// By part, those of the largest size while the kind was (nearly) as probable as ever.
   std::vector<Size> sizes;
-  Rival rival;  ///< at that time; empty where nobody told it
+  double then = 0.0;  ///< P(kind) at that time
+  Rival rival;        ///< likewise; empty where nobody told it
 };
 
 class Stretches {
@@ -91,6 +92,7 @@ class Stretches {
     double probability = 0.0;
     double extent = 0.0;          // of its sizes, all parts together
     engine::TimeNs since_ns = 0;  // as the engine has it
+    double then = 0.0;            // P(kind) when sizes and rival were seen
     std::vector<Size> sizes;
     Rival rival;
   };

@@ -9,6 +9,9 @@
 
 #include <algorithm>
 #include <chrono>
+#include <cmath>
+#include <cstdint>
+#include <sstream>
 #include <string>
 #include <thread>
 #include <vector>
@@ -60,7 +63,7 @@ TEST_F(CommandTest, WrongUsageIs2AndHelpIs0) {
       {"replay", "--rig", rig_, "--log", log_, "--time", "noon"},
       {"replay", "--rig", rig_, "--log", log_, "--settled"},
       {"replay", "--rig", rig_, "--log", log_, "--report", "r.html"},
-      {"replay", "--rig", rig_, "--log", log_, "--episodes", "e.csv"},
+      {"replay", "--rig", rig_, "--log", log_, "--out", "same", "--episodes", "same"},
       {"replay", "--rig", rig_, "--log", log_, "--out", "same", "--channels", "same"},
       {"replay", "--rig", rig_, "--log", folder_.path("none.csv")},
       {"replay", "--rig", rig_, "--log", folder_.path("")},
@@ -91,7 +94,149 @@ TEST_F(CommandTest, CheckSaysWhatTheRigMeans) {
   EXPECT_TRUE(has(end.out, "shows alone  level, inflow (rank 2 of 2)")) << end.out;
   EXPECT_TRUE(has(end.out, "every 30 d (720 h)")) << end.out;
   EXPECT_TRUE(has(end.out, "pump: has no period")) << end.out;
+  EXPECT_TRUE(has(end.out, "\n  without  level (m)")) << end.out;
+  EXPECT_TRUE(has(end.out, "\n  none     0.0")) << end.out;
+  EXPECT_TRUE(has(end.out, "\n  sonic    0.0")) << end.out;
+  EXPECT_TRUE(has(end.out, "channels of one source: share 0.1 of their freezes")) << end.out;
   EXPECT_TRUE(has(end.out, "is no safety function")) << end.out;
+}
+
+constexpr const char* kYardRig = R"(rig: yard
+response: 10 s
+states:
+  east:  {unit: m, start: 0, start_sd: 50}
+  north: {unit: m, start: 0, start_sd: 50}
+unrest: {east: 0.05, north: 0.05}
+common: [{channels: [tape, rod], share: 0.2}]
+freeze_share: 0.3
+channels:
+  fix:  {reads: [east, north], sd: [0.5, 0.5], range: [[-99, 99], [-99, 99]], resolution: 0.01, period: 1 s,
+         correlation: [0.4], time_sd: 20 ms}
+  tape: {reads: east, sd: 0.2, range: [-99, 99], resolution: 0.01, period: 1 s, correlation: 0.5}
+  rod:  {reads: east, sd: 0.2, range: [-99, 99], resolution: 0.01, on_change: {deadband: 1, heartbeat: 1 min}}
+)";
+
+TEST_F(CommandTest, CheckTellsWhatIsLostWithoutEachChannelAndPair) {
+  const Finished end = steelyard({"check", folder_.write("yard.yaml", kYardRig)});
+  ASSERT_EQ(end.code, 0) << end.err;
+  const auto row = [&](const std::string& without) {
+    const std::size_t at = end.out.find("\n  " + without + " ");
+    EXPECT_NE(at, std::string::npos) << without << end.out;
+    return at == std::string::npos ? std::string() : end.out.substr(at + 1, end.out.find('\n', at + 1) - at);
+  };
+  EXPECT_TRUE(has(row("without"), "east (m)"));
+  EXPECT_FALSE(has(row("none"), "lost")) << row("none");
+  EXPECT_TRUE(has(row("fix"), "  lost")) << row("fix");
+  EXPECT_FALSE(has(row("tape, rod"), "lost")) << row("tape, rod");
+  EXPECT_TRUE(has(end.out, "reads        fix.1: linear, sd 0.5 m")) << end.out;
+  EXPECT_TRUE(has(end.out, "noise of the parts correlated: 0.4\n")) << end.out;
+  EXPECT_TRUE(has(end.out, "times uncertain by 20 ms\n")) << end.out;
+  EXPECT_TRUE(has(end.out, "sends when it has moved by 1 m, or after 60 s\n")) << end.out;
+  EXPECT_TRUE(has(end.out, "tape, rod: share 0.2 of their faults\n")) << end.out;
+  EXPECT_TRUE(has(end.out, "share 0.3 of their freezes\n")) << end.out;
+  EXPECT_TRUE(has(end.out, "rod has no period; here it reads every 0.2 s\n")) << end.out;
+}
+
+/// A slow drive east: fix (never wrong) and tape, which from `fault_s` on reads 5 m too much.
+std::string yard_log(int seconds, int fault_s) {
+  std::string text = "time,fix.1,fix.2,tape\n";
+  std::uint64_t state = 7;
+  const auto noise = [&state](double sd) {  // sum of four uniform numbers, in hundredths
+    double sum = 0.0;
+    for (int i = 0; i < 4; ++i) {
+      state = state * 6364136223846793005U + 1442695040888963407U;
+      sum += static_cast<double>(state >> 11U) * 0x1p-53 - 0.5;
+    }
+    return std::round(100.0 * sd * std::sqrt(3.0) * sum) / 100.0;
+  };
+  for (int s = 0; s < seconds; ++s) {
+    text += std::to_string(1'700'000'000 + s);
+    const double east = 10.0 + 0.05 * s;  // a machine that stands still could not tell offset from stuck
+    for (const double value :
+         {east + noise(0.5), -20.0 + noise(0.5), east + noise(0.2) + (s >= fault_s ? 5.0 : 0.0)}) {
+      text += ',';
+      append_number(text, value);
+    }
+    text += '\n';
+  }
+  return text;
+}
+
+TEST_F(CommandTest, ReplayTakesVectorChannelsAndWritesARowForEachPart) {
+  const std::string rig = folder_.write("yard.yaml", kYardRig);
+  const std::string log = folder_.write("yard.csv", yard_log(60, 1000));
+  const Finished end = steelyard({"replay", "--rig", rig, "--log", log, "--channels", folder_.path("c.csv")});
+  EXPECT_EQ(end.code, 0) << end.err;
+  EXPECT_TRUE(has(end.out, "time,east,east.sd,north,north.sd,trust.fix,trust.tape,trust.rod\n"));
+  const std::string rows = read_file(folder_.path("c.csv"));
+  EXPECT_EQ(lines(rows), 1 + 60 * 4U);
+  const auto last = [&rows](const std::string& name) {
+    const std::size_t at = rows.rfind("1700000059," + name + ",");
+    return at == std::string::npos ? std::string() : rows.substr(at, rows.find('\n', at) - at);
+  };
+  for (const char* name : {"fix.1", "fix.2", "tape", "rod"}) EXPECT_NE(last(name), "") << name;
+  const auto trust = [&](const std::string& name) {
+    const std::size_t begin = last(name).find(name) + name.size() + 1;
+    return last(name).substr(begin, last(name).find(',', begin) - begin);
+  };
+  EXPECT_EQ(trust("fix.1"), trust("fix.2")) << "parts share the channel's trust";
+  EXPECT_NE(last("fix.1"), last("fix.2"));
+}
+
+TEST_F(CommandTest, ALogWithAWrongPartIsRefusedThereAlone) {
+  const std::string rig = folder_.write("yard.yaml", kYardRig);
+  const std::string log = folder_.write(
+      "parts.csv", "time,channel,value,value2\n1,fix,10,-20\n2,fix,10,\n3,fix,10,x\n4,tape,10,\n");
+  const Finished end = steelyard({"replay", "--rig", rig, "--log", log});
+  EXPECT_EQ(end.code, 2);
+  EXPECT_EQ(lines(end.out), 3U) << end.out;
+  EXPECT_TRUE(has(end.err, "parts.csv:3:10: fix.2: is empty; must be a number\n")) << end.err;
+  EXPECT_TRUE(has(end.err, "parts.csv:4:10: fix.2: is \"x\"; must be a number\n")) << end.err;
+}
+
+TEST_F(CommandTest, EpisodesTellWhatWasNotSound) {
+  const std::string rig = folder_.write("yard.yaml", kYardRig);
+  const std::string log = folder_.write("yard.csv", yard_log(200, 100));
+  const std::string path = folder_.path("e.csv");
+  const Arguments arguments{"replay", "--rig", rig, "--log", log, "--out", folder_.path("o.csv")};
+  Arguments with_episodes = arguments;
+  with_episodes.insert(with_episodes.end(), {"--episodes", path});
+  ASSERT_EQ(steelyard(with_episodes).code, 0);
+  const std::string text = read_file(path);
+  EXPECT_TRUE(text.starts_with(
+      "id,channel,from,to,kind,size,size.lo,size.hi,probability,rival,rival.probability,cause\n"));
+  std::istringstream stream(text);
+  std::string row;
+  std::string tape;
+  while (std::getline(stream, row)) {
+    EXPECT_EQ(std::count(row.begin(), row.end(), ','), 11) << row;
+    if (has(row, ",tape,")) tape = row;
+  }
+  // One spell, still going on, of about 5 m, from about when it began.
+  EXPECT_TRUE(has(tape, ",tape,17000001") || has(tape, ",tape,170000009")) << text;
+  EXPECT_TRUE(has(tape, ",,offset,") || has(tape, ",,creeping,") || has(tape, ",,wandering,")) << text;
+  std::vector<std::string> cells;
+  std::istringstream tape_stream(tape);
+  for (std::string cell; std::getline(tape_stream, cell, ',');) cells.push_back(cell);
+  ASSERT_EQ(cells.size(), 12U);
+  EXPECT_NEAR(std::stod(cells[5]), 5.0, 0.8) << tape;
+  EXPECT_LT(std::stod(cells[6]), std::stod(cells[5]));
+  EXPECT_GT(std::stod(cells[7]), std::stod(cells[5]));
+  EXPECT_GT(std::stod(cells[8]), 0.5);
+  EXPECT_NE(cells[9], "");
+  // Nothing about them decides estimates, and they are the same each time.
+  const std::string estimates = read_file(folder_.path("o.csv"));
+  ASSERT_EQ(steelyard(arguments).code, 0);
+  EXPECT_EQ(read_file(folder_.path("o.csv")), estimates);
+  ASSERT_EQ(steelyard(with_episodes).code, 0);
+  EXPECT_EQ(read_file(path), text);
+}
+
+TEST_F(CommandTest, ALogWithoutFaultsHasNoEpisodes) {
+  const std::string log = folder_.write("sound.csv", log_of(basin_rows(100, 1000)));
+  ASSERT_EQ(replay(log, {"--out", folder_.path("o.csv"), "--episodes", folder_.path("e.csv")}).code, 0);
+  EXPECT_EQ(lines(read_file(folder_.path("e.csv"))), 1U);
+  EXPECT_EQ(replay(log, {"--out", folder_.path("o.csv"), "--episodes", "/nowhere/e.csv"}).code, 1);
 }
 
 TEST_F(CommandTest, CheckListsEveryProblemAndEndsWith2) {
@@ -177,7 +322,7 @@ TEST_F(CommandTest, ReplayTellsInWordsWhenWhatAndHowSure) {
   EXPECT_EQ(to_file.code, 0) << to_file.err;
   EXPECT_EQ(to_file.err, "");
   EXPECT_TRUE(has(to_file.out, " %\nStretches")) << to_file.out;
-  EXPECT_TRUE(has(to_file.out, "Stretches in which a channel was not sound:\n  sonic: from 170000010"))
+  EXPECT_TRUE(has(to_file.out, "Stretches in which a channel was not sound:\n  sonic: from 1700000"))
       << to_file.out;
   const Finished to_stdout = replay(log_, {"--words"});
   EXPECT_EQ(to_stdout.err, to_file.out);

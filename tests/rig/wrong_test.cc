@@ -281,7 +281,8 @@ constexpr Row kRows[] = {
      "14:103: channels.sonic.correlation: is 0.5; must be a list of 3, one for each pair of parts, (1,2), "
      "(1,3) … (2,3) …\n"},
     {"reads: level, sd: 0.004, range: [0, 6], resolution: 0.001",
-     "reads: [level, inflow, level], sd: [1, 1, 1], range: [[0, 6], [0, 1], [0, 6]], correlation: [0.1, 1, x]",
+     "reads: [level, inflow, level], sd: [1, 1, 1], range: [[0, 6], [0, 1], [0, 6]], correlation: "
+     "[0.1, 1, x]",
      "14:109: channels.sonic.correlation[2]: is 1; must be greater than -1 and less than 1\n"
      "14:112: channels.sonic.correlation[3]: is x; must be a number, greater than -1 and less than 1\n"},
     {"reads: level, sd: 0.004, range: [0, 6], resolution: 0.001",

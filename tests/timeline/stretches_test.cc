@@ -240,6 +240,7 @@ TEST(Stretches, AskForTheFullEstimateAndTheRivalWhereTheyAreSurest) {
   ASSERT_EQ(all.size(), 1U);
   EXPECT_EQ(all[0].rival.words, "radar creeping");
   EXPECT_EQ(all[0].rival.probability, 0.07);
+  EXPECT_EQ(all[0].then, 0.9);
   ASSERT_EQ(all[0].sizes.size(), 1U);
   EXPECT_EQ(all[0].sizes[0].size, 1.5);
 }
