@@ -100,28 +100,34 @@ class Informed final : public Policy {
     const double t_s = step * run().machine.step_s;
     const double y = value(part, step);
     if (c.modulo == 0.0 && (y <= c.lo || y >= c.hi)) return;  // an end of the range says little
-    const double factor = f && f->kind == Kind::kNoise ? f->size : 1.0;
-    double r = factor * factor * c.sd * c.sd + rounding(c);
-    Expected x = filter.expect(part);
-    if (c.time_jitter_s > 0.0 && before_.size() > 0) r += std::pow(rate(part, x) * c.time_jitter_s, 2);
     const Extra* e = find(part, f && carries_state(f->kind) ? f : nullptr);
-    if (f && f->kind == Kind::kScale) {
-      if (!e) return begin_factor({part, j, f, 0}, y, r, filter);
-      const double shown = x.value;
-      x.value *= 1.0 + filter.x[e->index];
-      x.h *= 1.0 + filter.x[e->index];
-      x.h[e->index] = shown;
-    } else if (e && f && f->kind == Kind::kLag) {
-      return fuse_lag(*e, share_of(c.period_s, f->size * run().machine.response_s), 0.0, step, filter);
-    } else if (e && !f) {
-      return fuse_lag(*e, share_of(c.period_s, c.damping_s), damped_noise(c), step, filter);
-    } else if (e) {
-      const double law = shape(*f, run().machine.response_s, t_s);
-      x.h[e->index] = law;
-      x.value += law * filter.x[e->index];
-    }
+    if (e && (!f || f->kind == Kind::kLag)) return fuse_lag(*e, step, filter);
+    Expected x = filter.expect(part);
+    const double r = noise(part, c, f, x);
+    if (!e && f && f->kind == Kind::kScale) return begin_factor({part, j, f, 0}, y, r, filter);
+    if (e) add_law(*e, t_s, filter, x);
     if (n == Note::kHeld || n == Note::kQuiet) return fuse_interval(part, j, x, r, step, filter);
     filter.update(x.h, residual(c, y, x.value), r);
+  }
+
+  [[nodiscard]] double noise(int part, const Channel& c, const Fault* f, const Expected& x) const {
+    const double sd = f && f->kind == Kind::kNoise ? f->size * c.sd : c.sd;
+    const double jitter = c.time_jitter_s > 0.0 && before_.size() > 0 ? rate(part, x) * c.time_jitter_s : 0.0;
+    return sd * sd + rounding(c) + jitter * jitter;
+  }
+
+  // What a fault of unknown size makes of what is expected.
+  void add_law(const Extra& e, double t_s, const Filter& filter, Expected& x) const {
+    const double size = filter.x[e.index];
+    if (e.fault->kind == Kind::kScale) {
+      x.h *= 1.0 + size;
+      x.h[e.index] = x.value;
+      x.value *= 1.0 + size;
+    } else {
+      const double law = shape(*e.fault, run().machine.response_s, t_s);
+      x.h[e.index] = law;
+      x.value += law * size;
+    }
   }
 
   // y = (1 + a)·shown + v gives a, as soon as the channel shows far more than its uncertainty. From a vague
@@ -137,24 +143,21 @@ class Informed final : public Policy {
     extras_.push_back(e);
   }
 
-  // Noise ahead of the damping, as faults.cc makes it.
-  static double damped_noise(const Channel& c) {
-    const double share = share_of(c.period_s, c.damping_s);
-    return c.sd * c.sd * (2.0 - share) / share;
-  }
-
-  // The lag's state ℓ ← (1 − share)·ℓ + share·(h·x + w), w of variance `ahead`; the reading is ℓ with the
-  // noise that stands behind it.
-  void fuse_lag(const Extra& e, double share, double ahead, int step, Filter& filter) const {
+  // The lag's state ℓ ← (1 − share)·ℓ + share·(h·x + w); the reading is ℓ with the noise that stands behind
+  // it. A damping has its noise w ahead (as loud as faults.cc makes it), a lag behind.
+  void fuse_lag(const Extra& e, int step, Filter& filter) const {
+    const Channel& c = channel(e.channel);
+    const double lag_s = e.fault ? e.fault->size * run().machine.response_s : c.damping_s;
+    const double share = share_of(c.period_s, lag_s);
+    const double ahead = e.fault ? 0.0 : c.sd * c.sd * (2.0 - share) / share;
+    const double behind = e.fault ? c.sd * c.sd : 0.0;
     const Expected x = filter.expect(e.part);
     RowVector next = share * x.h;
     next[e.index] += 1.0 - share;
     filter.become(e.index, next, share * x.value + (1.0 - share) * filter.x[e.index]);
     filter.P(e.index, e.index) += share * share * ahead;
-    const Channel& c = channel(e.channel);
     RowVector reads = RowVector::Zero(filter.size());
     reads[e.index] = 1.0;
-    const double behind = e.fault ? c.sd * c.sd : 0.0;
     filter.update(reads, residual(c, value(e.part, step), filter.x[e.index]), behind + rounding(c));
   }
 
