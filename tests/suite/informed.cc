@@ -12,9 +12,8 @@
 namespace steelyard::suite {
 namespace {
 
-// Prior of an unknown size, in sd (offset, hum, drift per response time …), and of an unknown factor.
+// Prior of an unknown size, in sd (offset, hum, drift per response time …).
 constexpr double kSizeSd = 100.0;
-constexpr double kFactorSd = 1.5;
 
 double share_of(double period_s, double time_constant_s) {
   return 1.0 - std::exp(-period_s / time_constant_s);
@@ -57,7 +56,8 @@ class Informed final : public Policy {
       if (!run().row.has(j)) continue;
       const Fault* f = fault_at(run().row, j, t_s);
       const bool damped = !f && channel(j).damping_s > 0.0;
-      if (!damped && !(f && carries_state(f->kind))) continue;
+      // The state of a factor begins with a reading that shows it.
+      if (!damped && !(f && carries_state(f->kind) && f->kind != Kind::kScale)) continue;
       const int first = run().machine.first_part(j);
       for (int p = first; p < first + channel(j).parts; ++p)
         if (!find(p, f)) add(p, j, f, filter);
@@ -67,7 +67,6 @@ class Informed final : public Policy {
   void add(int part, int j, const Fault* f, Filter& filter) {
     const double sd = channel(j).sd;
     Extra extra{part, j, f, filter.append(0.0, kSizeSd * kSizeSd * sd * sd)};
-    if (f && f->kind == Kind::kScale) filter.P(extra.index, extra.index) = kFactorSd * kFactorSd;
     if (!f || f->kind == Kind::kLag) {
       // Starts from the true value, a damping with its noise at rest.
       Expected x = filter.expect(part);
@@ -88,7 +87,7 @@ class Informed final : public Policy {
     return f && !carries_state(f->kind) && f->kind != Kind::kNoise && f->kind != Kind::kStrays;
   }
 
-  void take_channel(int j, int step, double t_s, Filter& filter) const {
+  void take_channel(int j, int step, double t_s, Filter& filter) {
     const Fault* f = fault_at(run().row, j, t_s);
     const Note n = note(j, step);
     if (n == Note::kNone || n == Note::kWild || tells_nothing(f)) return;
@@ -96,65 +95,69 @@ class Informed final : public Policy {
     for (int p = first; p < first + channel(j).parts; ++p) take_part(p, j, f, n, step, filter);
   }
 
-  void take_part(int part, int j, const Fault* f, Note n, int step, Filter& filter) const {
+  void take_part(int part, int j, const Fault* f, Note n, int step, Filter& filter) {
     const Channel& c = channel(j);
     const double t_s = step * run().machine.step_s;
     const double y = value(part, step);
     if (c.modulo == 0.0 && (y <= c.lo || y >= c.hi)) return;  // an end of the range says little
-    const double factor = f && f->kind == Kind::kNoise ? f->size : 1.0;
-    double r = factor * factor * c.sd * c.sd + rounding(c);
+    const Extra* e = find(part, f && carries_state(f->kind) ? f : nullptr);
+    if (e && (!f || f->kind == Kind::kLag)) return fuse_lag(*e, step, filter);
     Expected x = filter.expect(part);
-    if (c.time_jitter_s > 0.0 && before_.size() > 0) r += std::pow(rate(part, x) * c.time_jitter_s, 2);
-    if (const Extra* e = find(part, f && carries_state(f->kind) ? f : nullptr)) {
-      if (!f) return fuse_lag(*e, share_of(c.period_s, c.damping_s), damped_noise(c), step, filter);
-      if (f->kind == Kind::kLag)
-        return fuse_lag(*e, share_of(c.period_s, f->size * run().machine.response_s), 0.0, step, filter);
-      if (f->kind == Kind::kScale) return fuse_scaled(*e, r, step, filter);
-      const double law = shape(*f, run().machine.response_s, t_s);
-      x.h[e->index] = law;
-      x.value += law * filter.x[e->index];
-    }
+    const double r = noise(part, c, f, x);
+    if (!e && f && f->kind == Kind::kScale) return begin_factor({part, j, f, 0}, y, r, filter);
+    if (e) add_law(*e, t_s, filter, x);
     if (n == Note::kHeld || n == Note::kQuiet) return fuse_interval(part, j, x, r, step, filter);
     filter.update(x.h, residual(c, y, x.value), r);
   }
 
-  // y = (1 + a)·shown, linearised about the outcome by iteration (Bell & Cathey 1993): a reversed sign is far
-  // from where it starts.
-  void fuse_scaled(const Extra& e, double r, int step, Filter& filter) const {
-    constexpr int kIterations = 6;
-    const Filter before = filter;
-    const double y = value(e.part, step);
-    for (int i = 0; i < kIterations; ++i) {
-      Expected x = filter.expect(e.part);
-      const double a = filter.x[e.index];
-      const double shown = x.value;
-      x.h *= 1.0 + a;
-      x.h[e.index] = shown;
-      const double expected = (1.0 + a) * shown + x.h.dot(before.x - filter.x);
-      filter.x = before.x;
-      filter.P = before.P;
-      filter.update(x.h, residual(channel(e.channel), y, expected), r);
+  [[nodiscard]] double noise(int part, const Channel& c, const Fault* f, const Expected& x) const {
+    const double sd = f && f->kind == Kind::kNoise ? f->size * c.sd : c.sd;
+    const double jitter = c.time_jitter_s > 0.0 && before_.size() > 0 ? rate(part, x) * c.time_jitter_s : 0.0;
+    return sd * sd + rounding(c) + jitter * jitter;
+  }
+
+  // What a fault of unknown size makes of what is expected.
+  void add_law(const Extra& e, double t_s, const Filter& filter, Expected& x) const {
+    const double size = filter.x[e.index];
+    if (e.fault->kind == Kind::kScale) {
+      x.h *= 1.0 + size;
+      x.h[e.index] = x.value;
+      x.value *= 1.0 + size;
+    } else {
+      const double law = shape(*e.fault, run().machine.response_s, t_s);
+      x.h[e.index] = law;
+      x.value += law * size;
     }
   }
 
-  // Noise ahead of the damping, as faults.cc makes it.
-  static double damped_noise(const Channel& c) {
-    const double share = share_of(c.period_s, c.damping_s);
-    return c.sd * c.sd * (2.0 - share) / share;
+  // y = (1 + a)·shown + v gives a, as soon as the channel shows far more than its uncertainty. From a vague
+  // prior instead, the filter would lock on to a wrong factor where the channel shows all but zero at first.
+  void begin_factor(Extra e, double y, double r, Filter& filter) {
+    constexpr double kFarMore = 10.0;
+    const Expected before = filter.expect(e.part);
+    if (std::fabs(before.value) < kFarMore * std::sqrt(filter.variance(before.h) + r)) return;
+    e.index = filter.append(0.0, 1.0);
+    const RowVector slope = -y / (before.value * before.value) * filter.expect(e.part).h;
+    filter.become(e.index, slope, y / before.value - 1.0);
+    filter.P(e.index, e.index) += r / (before.value * before.value);
+    extras_.push_back(e);
   }
 
-  // The lag's state ℓ ← (1 − share)·ℓ + share·(h·x + w), w of variance `ahead`; the reading is ℓ with the
-  // noise that stands behind it.
-  void fuse_lag(const Extra& e, double share, double ahead, int step, Filter& filter) const {
+  // The lag's state ℓ ← (1 − share)·ℓ + share·(h·x + w); the reading is ℓ with the noise that stands behind
+  // it. A damping has its noise w ahead (as loud as faults.cc makes it), a lag behind.
+  void fuse_lag(const Extra& e, int step, Filter& filter) const {
+    const Channel& c = channel(e.channel);
+    const double lag_s = e.fault ? e.fault->size * run().machine.response_s : c.damping_s;
+    const double share = share_of(c.period_s, lag_s);
+    const double ahead = e.fault ? 0.0 : c.sd * c.sd * (2.0 - share) / share;
+    const double behind = e.fault ? c.sd * c.sd : 0.0;
     const Expected x = filter.expect(e.part);
     RowVector next = share * x.h;
     next[e.index] += 1.0 - share;
     filter.become(e.index, next, share * x.value + (1.0 - share) * filter.x[e.index]);
     filter.P(e.index, e.index) += share * share * ahead;
-    const Channel& c = channel(e.channel);
     RowVector reads = RowVector::Zero(filter.size());
     reads[e.index] = 1.0;
-    const double behind = e.fault ? c.sd * c.sd : 0.0;
     filter.update(reads, residual(c, value(e.part, step), filter.x[e.index]), behind + rounding(c));
   }
 

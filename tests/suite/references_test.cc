@@ -169,18 +169,29 @@ TEST(References, CoverAsTheyStateOnMachinesThatTheyModelWell) {
   }
 }
 
+// Of informed over told, over some seeds.
+double informed_over_told(const Machine& m, const Row& row) {
+  Score informed;
+  Score told;
+  for (std::uint64_t seed = 1; seed <= 3; ++seed) {
+    const Scene scene(m, row, seed);
+    informed.add(scene.score_of(Reference::kInformed));
+    told.add(scene.score_of(Reference::kTold));
+  }
+  return ratio(informed, told);
+}
+
 // To know more never hurts by more than chance.
 TEST(References, InformedIsNoWorseThanTold) {
   double worst = 0.0;
   std::string where;
   for (const Machine& m : machines())
     for (const Row& row : m.rows) {
-      if (row.what == Class::kAmbiguous) continue;
-      const Scene scene(m, row, kSeed);
-      const double r = ratio(scene.score_of(Reference::kInformed), scene.score_of(Reference::kTold));
+      if (row.what == Class::kAmbiguous || (row.faults.empty() && row.traits.empty())) continue;
+      const double r = informed_over_told(m, row);
       if (r > worst) where = m.name + ": " + row.name;
       worst = std::max(worst, r);
-      EXPECT_LT(r, 1.10) << m.name << ": " << row.name << ", seed " << kSeed;
+      EXPECT_LT(r, 1.05) << m.name << ": " << row.name << ", seeds 1 to 3";
     }
   std::printf("informed over told at worst %.3f (%s)\n", worst, where.c_str());
 }
