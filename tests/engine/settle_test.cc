@@ -287,6 +287,122 @@ TEST(Settle, NileIsSmoothedAsPublished) {
   EXPECT_GT(apart, 1e-5) << "a lag of twenty years is not the whole series";
 }
 
+// ---- switching offsets ---------------------------------------------------------------------------------------
+
+/// The model of tests/outside/switching_offsets_test.cc, smoothed exactly: all condition paths of two channels
+/// over eight steps, each with the joint Gaussian of x at all steps and the offsets in force.
+class Paths {
+ public:
+  static constexpr int kPathSteps = 8;
+  using Vector = Eigen::Matrix<double, kPathSteps + 2, 1>;
+  using Matrix = Eigen::Matrix<double, kPathSteps + 2, kPathSteps + 2>;
+
+  Paths(const Csv& table, std::size_t first_row)
+      : table_(table), first_(first_row), log_scale_(table.number(first_row + kPathSteps - 1, "log_evidence")) {
+    Node root;
+    for (int i = 0; i < kPathSteps; ++i) {
+      root.mean(i) = 20.0;
+      for (int k = 0; k < kPathSteps; ++k) root.cov(i, k) = 1.0 + 0.0025 * std::min(i, k);
+    }
+    fuse(root, 0);
+  }
+  [[nodiscard]] double offset(int step, int channel) const { return offset_(step, channel) / total_; }
+  [[nodiscard]] double mean(int step) const { return mean_(step) / total_; }
+  [[nodiscard]] double variance(int step) const { return square_(step) / total_ - mean(step) * mean(step); }
+
+ private:
+  struct Node {
+    double log_weight = 0.0;
+    std::array<std::array<bool, 2>, kPathSteps> off{};
+    Vector mean = Vector::Zero();
+    Matrix cov = Matrix::Zero();
+  };
+  void fuse(Node& n, int step) {
+    for (int c = 0; c < 2; ++c) {
+      Vector row = Vector::Zero();
+      row(step) = 1.0;
+      if (n.off[static_cast<std::size_t>(step)][static_cast<std::size_t>(c)]) row(kPathSteps + c) = 1.0;
+      const Vector column = n.cov * row;
+      const double total = row.dot(column) + 0.04;
+      const double e = table_.number(first_ + static_cast<std::size_t>(step), c ? "y2" : "y1") - row.dot(n.mean);
+      n.log_weight -= 0.5 * (std::log(2.0 * M_PI * total) + e * e / total);
+      n.mean += column * (e / total);
+      n.cov -= column * column.transpose() / total;
+    }
+    if (step + 1 == kPathSteps) return gather(n);
+    for (int next = 0; next < 4; ++next) fork(n, step + 1, {(next & 1) != 0, (next & 2) != 0});
+  }
+  void fork(const Node& from, int step, std::array<bool, 2> off) {
+    Node n = from;
+    n.off[static_cast<std::size_t>(step)] = off;
+    for (std::size_t c = 0; c < 2; ++c) {
+      const bool was = from.off[static_cast<std::size_t>(step - 1)][c];
+      n.log_weight += std::log(was ? (off[c] ? 0.95 : 0.05) : (off[c] ? 0.02 : 0.98));
+      if (was || !off[c]) continue;
+      const auto at = kPathSteps + static_cast<Eigen::Index>(c);
+      n.cov.row(at).setZero();
+      n.cov.col(at).setZero();
+      n.cov(at, at) = 25.0;
+      n.mean(at) = 0.0;
+    }
+    fuse(n, step);
+  }
+  void gather(const Node& n) {
+    const double w = std::exp(n.log_weight - log_scale_);
+    total_ += w;
+    for (int t = 0; t < kPathSteps; ++t) {
+      mean_(t) += w * n.mean(t);
+      square_(t) += w * (n.cov(t, t) + n.mean(t) * n.mean(t));
+      for (std::size_t c = 0; c < 2; ++c)
+        if (n.off[static_cast<std::size_t>(t)][c]) offset_(t, static_cast<Eigen::Index>(c)) += w;
+    }
+  }
+
+  const Csv& table_;
+  std::size_t first_;
+  double log_scale_;
+  double total_ = 0.0;
+  Eigen::Matrix<double, kPathSteps, 1> mean_ = Eigen::Matrix<double, kPathSteps, 1>::Zero();
+  Eigen::Matrix<double, kPathSteps, 1> square_ = Eigen::Matrix<double, kPathSteps, 1>::Zero();
+  Eigen::Matrix<double, kPathSteps, 2> offset_ = Eigen::Matrix<double, kPathSteps, 2>::Zero();
+};
+
+Model switching_channels() {
+  Model model = kalman_model();
+  model.options.conditions[static_cast<std::size_t>(Condition::kOffset)] = true;
+  model.response_s = 1e15;  // walks fall with it: the offset is constant
+  model.states = {outside::state("x", 20.0, 1.0, 0.05, {0.0})};
+  for (const char* name : {"y1", "y2"}) {
+    ChannelModel c = outside::channel(name, 0.2, {1.0});
+    c.fails_every_s = 1.0 / (-3.0 * std::log1p(-0.02));
+    c.recovers_in_s = 1.0 / -std::log1p(-0.05);
+    c.offset_size = 5.0;
+    model.channels.push_back(c);
+  }
+  return model;
+}
+
+TEST(Settle, SwitchingOffsetsAreSmoothedAsByEnumeration) {
+  const Csv table = Csv::open("offset_exact.csv");
+  for (std::size_t first = 0; first < table.rows(); first += Paths::kPathSteps) {
+    const Paths exact(table, first);
+    Settled settled(switching_channels(), kForEver);
+    for (std::size_t t = 0; t < Paths::kPathSteps; ++t) {
+      outside::read(settled.engine, static_cast<TimeNs>(t + 1) * kSecond, 0, table.number(first + t, "y1"));
+      outside::read(settled.engine, static_cast<TimeNs>(t + 1) * kSecond, 1, table.number(first + t, "y2"));
+    }
+    settled.engine.settle_rest();
+    ASSERT_EQ(settled.all.size(), std::size_t{Paths::kPathSteps});
+    for (int t = 0; t < Paths::kPathSteps; ++t) {
+      const Estimate& e = settled.all[static_cast<std::size_t>(t)];
+      std::printf("%s t %d: mean %.4f %.4f sd %.4f %.4f P1 %.4f %.4f P2 %.4f %.4f (filtered %.4f)\n",
+                  table.text(first, "scenario").c_str(), t + 1, e.states[0].mean, exact.mean(t), e.states[0].sd,
+                  std::sqrt(exact.variance(t)), e.channels[0].probability[2], exact.offset(t, 0),
+                  e.channels[1].probability[2], exact.offset(t, 1), table.number(first + static_cast<std::size_t>(t), "p_offset2"));
+    }
+  }
+}
+
 // ---- the suite's axis ----------------------------------------------------------------------------------------
 
 struct Gain {
