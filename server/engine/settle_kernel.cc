@@ -33,7 +33,7 @@ bool goes_on(Condition before, Condition after) {
 
 bool read_at(const Slice& slice, int channel) {
   const ChannelMemory& memory = slice.memory.channels[static_cast<std::size_t>(channel)];
-  return memory.fused_any && memory.judged_at == slice.time;
+  return memory.fused_any && memory.fused_at == slice.time;
 }
 
 }  // namespace
@@ -178,7 +178,7 @@ void KernelMaker::add_fresh_noise(const Slice& before, const Slice& after, int k
     if (!read_at(after, j)) continue;
     const ChannelMemory& last = before.memory.channels[u];
     const double keeps =
-        last.fused_any ? correlation_over(model_.channels[u], seconds(after.time - last.judged_at)) : 0.0;
+        last.fused_any ? correlation_over(model_.channels[u], seconds(after.time - last.fused_at)) : 0.0;
     const double spec_sd = after.memory.spec_sd[static_cast<std::size_t>(layout_.first_part[u])];
     const auto at = static_cast<Eigen::Index>(c);
     noise_(at, at) += likelihood_.noise_variance(noise[j], (1.0 - keeps * keeps) * spec_sd * spec_sd);
