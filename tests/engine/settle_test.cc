@@ -29,7 +29,8 @@ constexpr TimeNs kForEver = std::numeric_limits<TimeNs>::max();
 
 /// An engine whose settled estimates are gathered.
 struct Settled {
-  Settled(const Model& model, TimeNs lag, Detail detail = Detail::kBrief) : Settled(model, settling(lag, detail)) {}
+  Settled(const Model& model, TimeNs lag, Detail detail = Detail::kBrief)
+      : Settled(model, settling(lag, detail)) {}
   Settled(const Model& model, Settling s)
       : engine(std::make_shared<const Model>(model), [&] {
           s.settled = [this](const Estimate& e) { all.push_back(e); };
@@ -46,7 +47,8 @@ struct Settled {
   Engine engine;
 };
 
-// ---- one hypothesis: the joint Gaussian of all times, conditioned densely ------------------------------------
+// ---- one hypothesis: the joint Gaussian of all times, conditioned densely
+// ------------------------------------
 
 struct Event {
   TimeNs time = 0;
@@ -60,7 +62,8 @@ class Joint {
  public:
   using Vector = Eigen::Matrix<long double, Eigen::Dynamic, 1>;
   using Matrix = Eigen::Matrix<long double, Eigen::Dynamic, Eigen::Dynamic>;
-  Joint(const Model& model, const std::vector<Event>& events) : model_(model), layout_(model), d_(layout_.fixed) {
+  Joint(const Model& model, const std::vector<Event>& events)
+      : model_(model), layout_(model), d_(layout_.fixed) {
     for (const Event& e : events)
       if (times_.empty() || times_.back() != e.time) times_.push_back(e.time);
     const auto size = static_cast<Eigen::Index>(times_.size()) * d_;
@@ -96,7 +99,9 @@ class Joint {
     cov_ -= column * column.transpose() / total;
   }
   [[nodiscard]] double mean(TimeNs t, int i) const { return static_cast<double>(mean_(at_of(t) + i)); }
-  [[nodiscard]] double sd(TimeNs t, int i) const { return static_cast<double>(std::sqrt(std::max(cov_(at_of(t) + i, at_of(t) + i), 0.0L))); }
+  [[nodiscard]] double sd(TimeNs t, int i) const {
+    return static_cast<double>(std::sqrt(std::max(cov_(at_of(t) + i, at_of(t) + i), 0.0L)));
+  }
 
  private:
   [[nodiscard]] Eigen::Index at_of(TimeNs t) const {
@@ -119,7 +124,8 @@ class Joint {
     for (int i = 0; i < layout_.states; ++i) {
       const auto& s = model_.states[static_cast<std::size_t>(i)];
       const auto& form = std::get<AffineForm>(s.rate);
-      for (int k = 0; k < layout_.states; ++k) system.rate(i, k) = form.on_states[static_cast<std::size_t>(k)];
+      for (int k = 0; k < layout_.states; ++k)
+        system.rate(i, k) = form.on_states[static_cast<std::size_t>(k)];
       system.rate(i, layout_.states) = form.on_inputs[0];
       system.drive(i) = form.constant;
       system.density(i) = s.unrest * s.unrest;
@@ -277,12 +283,14 @@ TEST(Settle, ASingularSolveReproducesWhatIsInReach) {
   }
 }
 
-// ---- the Nile ------------------------------------------------------------------------------------------------
+// ---- the Nile
+// ------------------------------------------------------------------------------------------------
 
 // See tests/outside/nile_test.cc for the source and for the start after the first year.
 std::vector<Estimate> nile(const Csv& table, TimeNs lag) {
   Model model = kalman_model();
-  model.states = {outside::state("flow", table.number(0, "y"), std::sqrt(15099.0 + 1469.1), std::sqrt(1469.1), {0.0})};
+  model.states = {
+      outside::state("flow", table.number(0, "y"), std::sqrt(15099.0 + 1469.1), std::sqrt(1469.1), {0.0})};
   model.channels = {outside::channel("gauge", std::sqrt(15099.0), {1.0})};
   Settled settled(model, lag);
   for (std::size_t i = 1; i < table.rows(); ++i)
@@ -313,10 +321,11 @@ TEST(Settle, NileIsSmoothedAsPublished) {
   EXPECT_GT(apart, 1e-5) << "a lag of twenty years is not the whole series";
 }
 
-// ---- switching offsets ---------------------------------------------------------------------------------------
+// ---- switching offsets
+// ---------------------------------------------------------------------------------------
 
-/// The model of tests/outside/switching_offsets_test.cc, smoothed exactly: all condition paths of two channels
-/// over eight steps, each with the joint Gaussian of x at all steps and the offsets in force.
+/// The model of tests/outside/switching_offsets_test.cc, smoothed exactly: all condition paths of two
+/// channels over eight steps, each with the joint Gaussian of x at all steps and the offsets in force.
 class Paths {
  public:
   static constexpr int kPathSteps = 8;
@@ -324,7 +333,9 @@ class Paths {
   using Matrix = Eigen::Matrix<double, kPathSteps + 2, kPathSteps + 2>;
 
   Paths(const Csv& table, std::size_t first_row)
-      : table_(table), first_(first_row), log_scale_(table.number(first_row + kPathSteps - 1, "log_evidence")) {
+      : table_(table),
+        first_(first_row),
+        log_scale_(table.number(first_row + kPathSteps - 1, "log_evidence")) {
     Node root;
     for (int i = 0; i < kPathSteps; ++i) {
       root.mean(i) = 20.0;
@@ -350,7 +361,8 @@ class Paths {
       if (n.off[static_cast<std::size_t>(step)][static_cast<std::size_t>(c)]) row(kPathSteps + c) = 1.0;
       const Vector column = n.cov * row;
       const double total = row.dot(column) + 0.04;
-      const double e = table_.number(first_ + static_cast<std::size_t>(step), c ? "y2" : "y1") - row.dot(n.mean);
+      const double e =
+          table_.number(first_ + static_cast<std::size_t>(step), c ? "y2" : "y1") - row.dot(n.mean);
       n.log_weight -= 0.5 * (std::log(2.0 * M_PI * total) + e * e / total);
       n.mean += column * (e / total);
       n.cov -= column * column.transpose() / total;
@@ -422,14 +434,223 @@ TEST(Settle, SwitchingOffsetsAreSmoothedAsByEnumeration) {
     for (int t = 0; t < Paths::kPathSteps; ++t) {
       const Estimate& e = settled.all[static_cast<std::size_t>(t)];
       std::printf("%s t %d: mean %.4f %.4f sd %.4f %.4f P1 %.4f %.4f P2 %.4f %.4f (filtered %.4f)\n",
-                  table.text(first, "scenario").c_str(), t + 1, e.states[0].mean, exact.mean(t), e.states[0].sd,
-                  std::sqrt(exact.variance(t)), e.channels[0].probability[2], exact.offset(t, 0),
-                  e.channels[1].probability[2], exact.offset(t, 1), table.number(first + static_cast<std::size_t>(t), "p_offset2"));
+                  table.text(first, "scenario").c_str(), t + 1, e.states[0].mean, exact.mean(t),
+                  e.states[0].sd, std::sqrt(exact.variance(t)), e.channels[0].probability[2],
+                  exact.offset(t, 0), e.channels[1].probability[2], exact.offset(t, 1),
+                  table.number(first + static_cast<std::size_t>(t), "p_offset2"));
     }
   }
 }
 
-// ---- the suite's axis ----------------------------------------------------------------------------------------
+// ---- laws that are not affine, inputs that are not known
+// ---------------------------------------------------------
+
+/// An affine law in a formula's clothes: it runs by regression.
+class Disguised : public Formula {
+ public:
+  explicit Disguised(AffineForm form) : law_(std::move(form)) {}
+  double evaluate(std::span<const double> states, std::span<const double> inputs, double time_s) override {
+    return law_value(law_, states, inputs, time_s);
+  }
+
+ private:
+  Law law_;
+};
+
+void expect_alike(const Estimate& a, const Estimate& b, double tolerance) {
+  ASSERT_EQ(a.time_ns, b.time_ns);
+  for (std::size_t i = 0; i < std::min(a.states.size(), b.states.size()); ++i) {
+    ASSERT_NEAR(a.states[i].mean, b.states[i].mean, tolerance) << "state " << i;
+    ASSERT_NEAR(a.states[i].sd, b.states[i].sd, tolerance) << "state " << i;
+  }
+}
+
+TEST(Settle, RegressionGoesBackAsTheExactLawDoes) {
+  Random random(5);
+  Model model = one_hypothesis(random, 3);
+  const auto events = random_events(random, 40);
+  Settled affine(model, kSecond);
+  run(affine.engine, events);
+  affine.engine.settle_rest();
+  model.states[1].rate = std::make_shared<Disguised>(std::get<AffineForm>(model.states[1].rate));
+  Settled disguised(model, kSecond);
+  run(disguised.engine, events);
+  disguised.engine.settle_rest();
+  ASSERT_EQ(affine.all.size(), disguised.all.size());
+  for (std::size_t i = 0; i < affine.all.size(); ++i) expect_alike(affine.all[i], disguised.all[i], 1e-9);
+}
+
+// An input that is not known is an Ornstein–Uhlenbeck process: the same machine with a state that is one.
+TEST(Settle, AnInputThatIsNotKnownGoesBackAsAStateWould) {
+  Random random(6);
+  Model model = one_hypothesis(random, 2);
+  model.inputs[0].lo = -1.0;
+  model.inputs[0].hi = 3.0;
+  Model with_state = model;
+  StateModel s;
+  s.name = "unknown";
+  s.start = model.inputs[0].start;
+  s.start_sd = model.inputs[0].sd;
+  s.unrest = std::sqrt(2.0 / model.response_s * 16.0 / 12.0);
+  s.rate = AffineForm{{0, 0, -1.0 / model.response_s}, {0}, 1.0 / model.response_s};
+  const auto moved = [](Law& law, double at) {
+    auto& form = std::get<AffineForm>(law);
+    form.on_states.push_back(at == 0.0 ? form.on_inputs[0] : at);
+    form.on_inputs[0] = 0.0;
+  };
+  for (auto& state : with_state.states) moved(state.rate, 0.0);
+  for (auto& c : with_state.channels) moved(c.reads, 0.0);
+  with_state.states.push_back(s);
+  std::vector<Event> events = random_events(random, 40);
+  std::erase_if(events, [](const Event& e) { return e.channel < 0; });
+  Settled input(model, kSecond);
+  input.engine.set_input(events.front().time, 0, 0.0, false);
+  Settled state(with_state, kSecond);
+  for (Settled* settled : {&input, &state}) {
+    run(settled->engine, events);
+    settled->engine.settle_rest();
+  }
+  ASSERT_EQ(input.all.size(), state.all.size());
+  for (std::size_t i = 0; i < input.all.size(); ++i) {
+    expect_alike(input.all[i], state.all[i], 1e-9);
+    ASSERT_NEAR(input.all[i].inputs[0], state.all[i].states[2].mean, 1e-9);
+  }
+}
+
+// ---- what is settled when
+// ----------------------------------------------------------------------------------------
+
+struct AxisRun {
+  AxisRun() : model(suite::axis_model({}, double_fault())), readings(axis_readings(3)) {}
+  /// Steps around the fault's onset, up to and with `last`.
+  [[nodiscard]] std::vector<Estimate> settle(const Settling& settling, int last = kLast) const {
+    Settled settled(*model, settling);
+    for (int i = kFirst; i <= last; ++i) read_moment(settled.engine, readings, i);
+    settled.engine.settle_rest();
+    early = settled.engine.settled_early();
+    return settled.all;
+  }
+  static constexpr int kFirst = 940;
+  static constexpr int kLast = 1060;
+  static constexpr TimeNs kStep = 20'000'000;
+  std::shared_ptr<Model> model;
+  suite::Readings readings;
+  mutable std::int64_t early = 0;
+};
+
+TEST(Settle, EachMomentHasExactlyTheReadingsOfItsLag) {
+  const AxisRun axis;
+  const Settling settling = Settled::settling(15 * AxisRun::kStep, Detail::kFull);
+  const auto all = axis.settle(settling);
+  ASSERT_EQ(all.size(), std::size_t{AxisRun::kLast - AxisRun::kFirst + 1});
+  EXPECT_EQ(axis.early, 0);
+  for (const int step : {940, 941, 985, 998, 1000, 1001, 1005, 1030, 1045, 1050, 1060}) {
+    const auto until = axis.settle(settling, std::min(step + 15, AxisRun::kLast));
+    const auto at = static_cast<std::size_t>(step - AxisRun::kFirst);
+    EXPECT_EQ(all[at].time_ns, axis_time(step));
+    EXPECT_TRUE(same_bits(numbers(all[at]), numbers(until[at]))) << "step " << step;
+    const auto fewer = axis.settle(settling, std::min(step + 14, AxisRun::kLast));
+    if (step + 15 <= AxisRun::kLast) {
+      EXPECT_FALSE(same_bits(numbers(all[at]), numbers(fewer[at]))) << "step " << step;
+    }
+  }
+}
+
+TEST(Settle, AtALimitTheOldestIsSettledEarly) {
+  const AxisRun axis;
+  Settling settling = Settled::settling(10 * AxisRun::kStep, Detail::kBrief);
+  const auto ten = axis.settle(settling);
+  settling.lag_ns = kSecond;
+  settling.max_slices = 11;
+  const auto limited = axis.settle(settling);
+  EXPECT_EQ(axis.early, 111);
+  ASSERT_EQ(limited.size(), ten.size());
+  for (std::size_t i = 0; i < ten.size(); ++i)
+    EXPECT_TRUE(same_bits(numbers(limited[i]), numbers(ten[i]))) << "row " << i;
+}
+
+TEST(Settle, WithoutRoomWhatIsSettledIsWhatWasFiltered) {
+  const AxisRun axis;
+  Settling settling = Settled::settling(kSecond, Detail::kBrief);
+  settling.max_bytes = 1;
+  const auto all = axis.settle(settling);
+  EXPECT_EQ(axis.early, AxisRun::kLast - AxisRun::kFirst);  // the last is not early
+  Engine live(axis.model);
+  for (int i = AxisRun::kFirst; i <= AxisRun::kLast; ++i) {
+    read_moment(live, axis.readings, i);
+    const auto a = numbers(outside::estimate(live, axis_time(i)));
+    const auto b = numbers(all[static_cast<std::size_t>(i - AxisRun::kFirst)]);
+    ASSERT_EQ(a.size(), b.size());
+    for (std::size_t k = 0; k < a.size(); ++k) ASSERT_NEAR(a[k], b[k], 1e-11 * (1.0 + std::fabs(a[k]))) << k;
+  }
+}
+
+TEST(Settle, ATenthOfTheComputeBudgetChangesNothing) {
+  const AxisRun axis;
+  Settling settling = Settled::settling(kSecond, Detail::kBrief);
+  const auto usual = axis.settle(settling);
+  settling.negligible /= 10.0;
+  const auto finer = axis.settle(settling);
+  double mean = 0.0;
+  double sd = 0.0;
+  double trust = 0.0;
+  for (std::size_t i = 0; i < usual.size(); ++i) {
+    for (std::size_t x = 0; x < 2; ++x) {
+      mean = std::max(mean,
+                      std::fabs(usual[i].states[x].mean - finer[i].states[x].mean) / finer[i].states[x].sd);
+      sd = std::max(sd, relative(usual[i].states[x].sd, finer[i].states[x].sd));
+    }
+    for (std::size_t j = 0; j < usual[i].channels.size(); ++j)
+      trust = std::max(trust, std::fabs(usual[i].channels[j].trust - finer[i].channels[j].trust));
+  }
+  std::printf("a tenth of the budget: mean %.1e sd, sd %.1e, trust %.1e\n", mean, sd, trust);
+  EXPECT_LT(mean, 1e-3);
+  EXPECT_LT(sd, 1e-3);
+  EXPECT_LT(trust, 1e-12);  // weights go back whatever the budget
+}
+
+TEST(Settle, EveryTimeOfReadingHasOneEstimate) {
+  Model model = kalman_model();
+  model.states = {outside::state("x", 0.0, 1.0, 0.1, {0.0})};
+  model.inputs = {{"u", "1", 0.0, 0.1, 0.0, -1.0, 1.0}};
+  std::get<AffineForm>(model.states[0].rate).on_inputs = {1.0};
+  model.channels = {outside::channel("a", 0.1, {1.0}), outside::channel("b", 0.1, {1.0})};
+  for (auto& c : model.channels) std::get<AffineForm>(c.reads).on_inputs = {0.0};
+  model.channels[0].lo = -5.0;
+  model.channels[0].period_s = 1.0;
+  Settled settled(model, kSecond / 2);
+  Engine& engine = settled.engine;
+  EXPECT_EQ(engine.read(1 * kSecond, 0, 0.1, Quality::kBad), Fate::kNotUsable);
+  EXPECT_EQ(engine.read(2 * kSecond, 0, 0.1, Quality::kGood), Fate::kFused);
+  EXPECT_EQ(engine.read(2 * kSecond, 1, 0.2, Quality::kGood), Fate::kFused);
+  EXPECT_EQ(engine.read(2 * kSecond + 1, 0, 0.1, Quality::kGood), Fate::kSameMeasurement);
+  engine.set_input(3 * kSecond, 0, 0.5, true);
+  EXPECT_EQ(engine.read(4 * kSecond, 0, -6.0, Quality::kGood), Fate::kOutOfRange);
+  engine.set_input(5 * kSecond, 0, 0.5, false);
+  EXPECT_EQ(engine.read(6 * kSecond, 1, 0.7, Quality::kGood), Fate::kFused);
+  EXPECT_EQ(settled.all.size(), 4U) << "all that is over half a second behind";
+  engine.settle_rest();
+  const std::vector<TimeNs> times{1 * kSecond, 2 * kSecond, 2 * kSecond + 1, 4 * kSecond, 6 * kSecond};
+  ASSERT_EQ(settled.all.size(), times.size());
+  for (std::size_t i = 0; i < times.size(); ++i) EXPECT_EQ(settled.all[i].time_ns, times[i]);
+}
+
+TEST(Settle, ACopyGoesOnWithoutSettling) {
+  const AxisRun axis;
+  Settled settled(*axis.model, 0);
+  read_moment(settled.engine, axis.readings, 940);
+  Engine copy = settled.engine;
+  for (int i = 941; i < 950; ++i) read_moment(copy, axis.readings, i);
+  copy.settle_rest();
+  EXPECT_TRUE(settled.all.empty());
+  for (int i = 941; i < 950; ++i) read_moment(settled.engine, axis.readings, i);
+  EXPECT_EQ(settled.all.size(), 9U);
+  EXPECT_TRUE(same_bits(numbers(outside::estimate(copy, axis_time(949))),
+                        numbers(outside::estimate(settled.engine, axis_time(949)))));
+}
+
+// ---- the suite's axis
+// ----------------------------------------------------------------------------------------
 
 struct Gain {
   double live = 0.0;  ///< sums of squared errors of the position
@@ -462,7 +683,8 @@ Gain gain(const suite::Row& row, std::uint64_t seed, int steps, Settling settlin
   constexpr int kFirst = 180;
   auto begin = std::chrono::steady_clock::now();
   const auto busy_us = [&] {
-    return std::chrono::duration<double, std::micro>(std::chrono::steady_clock::now() - begin).count() / steps;
+    return std::chrono::duration<double, std::micro>(std::chrono::steady_clock::now() - begin).count() /
+           steps;
   };
   for (int i = 0; i < steps; ++i) {
     feed(live, readings, i);
@@ -502,9 +724,41 @@ TEST(Settle, TheAxisGains) {
   };
   for (const auto& row : rows) {
     const Gain g = gain(row, 1, 3000, Settled::settling(2 * kSecond, Detail::kBrief));
-    std::printf("%-22s position %.3f speed %.3f of live; 95 %% covers %.3f (live %.3f); us a moment %.0f (live %.0f)\n",
-                row.name.c_str(), std::sqrt(g.settled / g.live), std::sqrt(g.speed_settled / g.speed_live),
-                g.covered / g.moments, g.live_covered / g.moments, g.settled_us, g.live_us);
+    std::printf(
+        "%-22s position %.3f speed %.3f of live; 95 %% covers %.3f (live %.3f); us a moment %.0f (live "
+        "%.0f)\n",
+        row.name.c_str(), std::sqrt(g.settled / g.live), std::sqrt(g.speed_settled / g.speed_live),
+        g.covered / g.moments, g.live_covered / g.moments, g.settled_us, g.live_us);
+  }
+}
+
+TEST(Probe, Onset) {
+  for (const auto& [kind, size] : std::vector<std::pair<suite::Kind, double>>{{suite::Kind::kOffset, 20.0}, {suite::Kind::kOffset, 4.0}, {suite::Kind::kFrozen, 0.0}, {suite::Kind::kNoise, 10.0}, {suite::Kind::kDrift, 2.0}, {suite::Kind::kLag, 0.5}}) {
+    const suite::Row row{"r", {{0, kind, size}}};
+    const suite::Truth truth = suite::simulate(1);
+    const suite::Readings readings = suite::read(truth, row, 1);
+    const auto model = suite::axis_model({}, row);
+    Settled settled(*model, Settled::settling(2 * kSecond, Detail::kBrief));
+    std::vector<double> live;
+    std::vector<double> live_p, live_sd;
+    Estimate e;
+    const int from = 800;
+    for (int i = from; i < 2200; ++i) {
+      feed(settled.engine, readings, i);
+      settled.engine.estimate(axis_time(i), Detail::kBrief, e);
+      live.push_back(e.channels[0].trust);
+      live_p.push_back(e.states[0].mean);
+      live_sd.push_back(e.states[0].sd);
+    }
+    settled.engine.settle_rest();
+    std::printf("kind %d size %.0f\n", static_cast<int>(kind), size);
+    for (const int i : {900, 950, 980, 990, 995, 998, 999, 1000, 1001, 1002, 1005, 1010, 1020, 1050, 1100, 1500, 1950, 1980, 1990, 1995, 1998, 1999, 2000, 2001, 2002, 2005, 2010, 2020, 2050}) {
+      const auto& s = settled.all[static_cast<std::size_t>(i - from)];
+      const auto u = static_cast<std::size_t>(i - from);
+      const double x = truth.position[static_cast<std::size_t>(i)];
+      std::printf("  %4d trust live %.3f settled %.3f   error live %+.4f (%.4f) settled %+.4f (%.4f)\n", i, live[u],
+                  s.channels[0].trust, live_p[u] - x, live_sd[u], s.states[0].mean - x, s.states[0].sd);
+    }
   }
 }
 
