@@ -20,6 +20,7 @@ Settler::Settler(const Posterior& posterior, Settling settling)
     : layout_(posterior.layout),
       settling_(std::move(settling)),
       kernels_(posterior),
+      evidence_(layout_),
       trails_(layout_, layout_.lineage),
       scratch_(static_cast<std::size_t>(layout_.max_dim * layout_.max_dim)),
       pool_(layout_, layout_.lineage) {
@@ -109,21 +110,10 @@ void Settler::step(const Slice& before, Slice& after) {
   past_.weight.assign(before.kept.size(), 0.0);
   past_.mixed.assign(before.kept.size(), 0.0);
   for (std::size_t k = 0; k < after.kept.size(); ++k) {
-    const Kept& to = after.kept[k];
-    for (int s = after.first_share[k]; s < after.first_share[k + 1]; ++s) {
-      Share& share = after.shares[static_cast<std::size_t>(s)];
-      const double weight = now_.weight[k] * share.of_weight;
-      past_.weight[static_cast<std::size_t>(share.ancestor)] += weight;
-      if (!(weight >= settling_.negligible)) continue;
-      if (share.kernel < 0) {
-        share.kernel = static_cast<std::ptrdiff_t>(after.kernels.size());
-        kernels_.make(before, share.ancestor, after, static_cast<int>(k));
-      }
-      const int dim = before.kept[static_cast<std::size_t>(share.ancestor)].dim;
-      const Kernel kernel = kernel_at(after.kernels.data() + share.kernel, dim, to.dim);
-      const double* moments = now_.moments.data() + to.at;
-      kernel.apply(moments, moments + to.dim, scratch_.data(), pair_.data(), pair_.data() + dim);
-      mix(before, share.ancestor, weight);
+    for (int begin = after.first_share[k]; begin < after.first_share[k + 1];) {
+      const int end = group_end(before, after, begin, after.first_share[k + 1]);
+      step_group(before, after, static_cast<int>(k), begin, end);
+      begin = end;
     }
   }
   for (std::size_t i = 0; i < before.kept.size(); ++i) {
@@ -132,6 +122,51 @@ void Settler::step(const Slice& before, Slice& after) {
     std::copy_n(before.moments.data() + h.at, h.dim + h.dim * h.dim, past_.moments.data() + h.at);
   }
   std::swap(now_, past_);
+}
+
+// End of the shares, from `begin` on, whose ancestors have equal conditions.
+int Settler::group_end(const Slice& before, const Slice& after, int begin, int last) {
+  const auto conditions = [&](int s) {
+    return before.kept[static_cast<std::size_t>(after.shares[static_cast<std::size_t>(s)].ancestor)]
+        .conditions;
+  };
+  int end = begin + 1;
+  while (end < last && conditions(end) == conditions(begin)) ++end;
+  return end;
+}
+
+void Settler::step_group(const Slice& before, Slice& after, int k, int begin, int end) {
+  const auto u = static_cast<std::size_t>(k);
+  const Kept& to = after.kept[u];
+  const std::span<Share> shares(after.shares.data() + begin, static_cast<std::size_t>(end - begin));
+  weights_.clear();
+  double sum = 0.0;
+  for (const Share& share : shares) sum += weights_.emplace_back(now_.weight[u] * share.of_weight);
+  const double* moments = now_.moments.data() + to.at;
+  if (sum >= settling_.negligible) {
+    find_kernels(before, after, k, shares);
+    evidence_.reweigh(group_, moments, moments + to.dim, to.dim, weights_);
+  }
+  for (std::size_t s = 0; s < shares.size(); ++s) {
+    const int i = shares[s].ancestor;
+    past_.weight[static_cast<std::size_t>(i)] += weights_[s];
+    if (sum < settling_.negligible || weights_[s] < settling_.negligible) continue;
+    group_[s].apply(moments, moments + to.dim, scratch_.data(), pair_.data(), pair_.data() + group_[s].rows);
+    mix(before, i, weights_[s]);
+  }
+}
+
+void Settler::find_kernels(const Slice& before, Slice& after, int k, std::span<Share> shares) {
+  for (Share& share : shares) {
+    if (share.kernel >= 0) continue;
+    share.kernel = static_cast<std::ptrdiff_t>(after.kernels.size());
+    kernels_.make(before, share.ancestor, after, k);
+  }
+  group_.clear();
+  for (const Share& share : shares)
+    group_.push_back(kernel_at(after.kernels.data() + share.kernel,
+                               before.kept[static_cast<std::size_t>(share.ancestor)].dim,
+                               after.kept[static_cast<std::size_t>(k)].dim));
 }
 
 // Adds pair_ to the mixture of hypothesis i, by moments.

@@ -8,6 +8,7 @@
 #include <deque>
 #include <vector>
 
+#include "engine/settle_evidence.h"
 #include "engine/settle_kernel.h"
 #include "engine/settle_slice.h"
 
@@ -46,6 +47,9 @@ class Settler {
   [[nodiscard]] bool beyond_limits() const;
   void settle(const Posterior& posterior, int count);
   void step(const Slice& before, Slice& after);
+  [[nodiscard]] static int group_end(const Slice& before, const Slice& after, int begin, int last);
+  void step_group(const Slice& before, Slice& after, int k, int begin, int end);
+  void find_kernels(const Slice& before, Slice& after, int k, std::span<Share> shares);
   void mix(const Slice& before, int i, double weight);
   void estimate(const Posterior& posterior, const Slice& slice);
   void drop_oldest(int count);
@@ -54,13 +58,16 @@ class Settler {
   Settling settling_;
   std::int64_t early_ = 0;
   KernelMaker kernels_;
+  Evidence evidence_;
   Trails trails_;
   std::deque<Slice> window_;  ///< oldest first, all within the lag of the oldest
   std::vector<Slice> spare_;
   Slice open_;  ///< of the present time
   Smoothed now_;
   Smoothed past_;
-  std::vector<double> pair_;  ///< one pair's moments
+  std::vector<Kernel> group_;    ///< of the shares that are looked at
+  std::vector<double> weights_;  ///< theirs
+  std::vector<double> pair_;     ///< one pair's moments
   std::vector<double> scratch_;
   Pool pool_;  ///< smoothed hypotheses of the slice that is reported
   std::vector<Estimate> settled_;

@@ -91,7 +91,8 @@ void solve_semidefinite(Eigen::MatrixXd& s, const Eigen::MatrixXd& cross, Eigen:
 
 Kernel kernel_at(const double* at, int rows, int columns) {
   const double* gain = at + rows + columns;
-  return {at, at + rows, gain, gain + rows * columns, rows, columns};
+  const double* left = gain + rows * columns;
+  return {at, at + rows, gain, left, left + rows * rows, rows, columns};
 }
 
 void Kernel::apply(const double* after_mean, const double* after_cov, double* scratch, double* mean_out,
@@ -218,6 +219,9 @@ void KernelMaker::write(const double* mean, int columns, double* out) const {
     for (int r = 0; r < n; ++r) gain[r * columns + column] = gain_(r, static_cast<Eigen::Index>(a));
   }
   Eigen::Map<RowMajor>(left, n, n) = 0.5 * (left_ + left_.transpose());
+  // The states are carried first.
+  const int states = layout_.states;
+  Eigen::Map<RowMajor>(left + n * n, states, states) = predicted_.topLeftCorner(states, states);
 }
 
 void KernelMaker::make(const Slice& before, int i, Slice& after, int k) {
@@ -228,6 +232,7 @@ void KernelMaker::make(const Slice& before, int i, Slice& after, int k) {
   carried_.clear();
   gain_.resize(from.dim, 0);
   left_ = cov_;
+  predicted_.setZero(layout_.states, layout_.states);
   // What has a share has moved; were it not so, what was filtered would stay.
   if (const Move* move = after.move_of(from.conditions, to.mode)) {
     find_carried(from, to, after);
@@ -236,8 +241,9 @@ void KernelMaker::make(const Slice& before, int i, Slice& after, int k) {
     add_changed_walks(from, to, after);
     add_fresh_noise(before, after, k);
     const Eigen::MatrixXd cross = cov_.lazyProduct(rows_.transpose());
-    left_ = rows_.lazyProduct(cross);
-    left_ += noise_;
+    predicted_ = rows_.lazyProduct(cross);
+    predicted_ += noise_;
+    left_ = predicted_;
     solve_semidefinite(left_, cross, gain_);
     Eigen::MatrixXd rest = Eigen::MatrixXd::Identity(from.dim, from.dim);
     rest -= gain_.lazyProduct(rows_);
@@ -245,7 +251,7 @@ void KernelMaker::make(const Slice& before, int i, Slice& after, int k) {
     left_ += Eigen::MatrixXd(gain_.lazyProduct(noise_)).lazyProduct(gain_.transpose());
   }
   const std::size_t at = after.kernels.size();
-  after.kernels.resize(at + Kernel::size(from.dim, to.dim));
+  after.kernels.resize(at + Kernel::size(from.dim, to.dim, layout_.states));
   write(mean, to.dim, after.kernels.data() + at);
 }
 

@@ -13,18 +13,19 @@ namespace steelyard::engine {
 /// z(before) = mean + gain · (z(after) − expected) + N(0, left). Columns of `gain` for what only the later
 /// hypothesis carries are zero: it is new, hence independent of what was.
 struct Kernel {
-  const double* mean = nullptr;      ///< rows
-  const double* expected = nullptr;  ///< columns
-  const double* gain = nullptr;      ///< rows × columns
-  const double* left = nullptr;      ///< rows × rows
+  const double* mean = nullptr;       ///< rows
+  const double* expected = nullptr;   ///< columns
+  const double* gain = nullptr;       ///< rows × columns
+  const double* left = nullptr;       ///< rows × rows
+  const double* predicted = nullptr;  ///< states × states: covariance that goes with `expected`
   int rows = 0;
   int columns = 0;
 
   /// Moments of z(before) for z(after) ~ N(mean, cov); `scratch` has rows × columns numbers.
   void apply(const double* after_mean, const double* after_cov, double* scratch, double* mean_out,
              double* cov_out) const;
-  [[nodiscard]] static std::size_t size(int rows, int columns) {
-    return static_cast<std::size_t>(rows + columns + rows * columns + rows * rows);
+  [[nodiscard]] static std::size_t size(int rows, int columns, int states) {
+    return static_cast<std::size_t>(rows + columns + rows * columns + rows * rows + states * states);
   }
 };
 
@@ -65,6 +66,7 @@ class KernelMaker {
   Eigen::MatrixXd noise_;
   Eigen::MatrixXd gain_;
   Eigen::MatrixXd left_;
+  Eigen::MatrixXd predicted_;  ///< covariance of what is carried
 };
 
 /// gain · s = cross for a covariance s that may be singular: a coordinate that others determine, or that has
