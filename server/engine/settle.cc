@@ -12,7 +12,8 @@
 namespace steelyard::engine {
 namespace {
 
-constexpr double kLeastWeight = 1e-20;  // of a hypothesis in a report, as in Options::weight_floor
+constexpr double kFollowed = 1e-12;  // smoothed weight under which a hypothesis is not followed further back
+constexpr double kReported = 1e-20;  // and is not reported, as in Options::weight_floor
 
 }  // namespace
 
@@ -110,6 +111,7 @@ void Settler::step(const Slice& before, Slice& after) {
   past_.weight.assign(before.kept.size(), 0.0);
   past_.mixed.assign(before.kept.size(), 0.0);
   for (std::size_t k = 0; k < after.kept.size(); ++k) {
+    if (!(now_.weight[k] > kFollowed)) continue;
     for (int begin = after.first_share[k]; begin < after.first_share[k + 1];) {
       const int end = group_end(before, after, begin, after.first_share[k + 1]);
       step_group(before, after, static_cast<int>(k), begin, end);
@@ -145,7 +147,7 @@ void Settler::step_group(const Slice& before, Slice& after, int k, int begin, in
   const double* moments = now_.moments.data() + to.at;
   if (sum >= settling_.negligible) {
     find_kernels(before, after, k, shares);
-    evidence_.reweigh(group_, moments, moments + to.dim, to.dim, weights_);
+    evidence_.reweigh(prospects_, moments, moments + to.dim, to.dim, weights_);
   }
   for (std::size_t s = 0; s < shares.size(); ++s) {
     const int i = shares[s].ancestor;
@@ -156,17 +158,23 @@ void Settler::step_group(const Slice& before, Slice& after, int k, int begin, in
   }
 }
 
+// All of a group are made at once: each is seen from where all of them were predicted to be.
 void Settler::find_kernels(const Slice& before, Slice& after, int k, std::span<Share> shares) {
+  const bool missing = shares.front().kernel < 0;
   for (Share& share : shares) {
-    if (share.kernel >= 0) continue;
+    if (!missing) break;
     share.kernel = static_cast<std::ptrdiff_t>(after.kernels.size());
     kernels_.make(before, share.ancestor, after, k);
   }
   group_.clear();
-  for (const Share& share : shares)
+  prospects_.clear();
+  for (const Share& share : shares) {
     group_.push_back(kernel_at(after.kernels.data() + share.kernel,
                                before.kept[static_cast<std::size_t>(share.ancestor)].dim,
-                               after.kept[static_cast<std::size_t>(k)].dim));
+                               after.kept[static_cast<std::size_t>(k)].dim, layout_.states));
+    prospects_.push_back(group_.back().prospect);
+  }
+  if (missing) evidence_.prepare(prospects_, weights_);
 }
 
 // Adds pair_ to the mixture of hypothesis i, by moments.
@@ -197,7 +205,7 @@ void Settler::estimate(const Posterior& posterior, const Slice& slice) {
   pool_.clear();
   const std::size_t learned = pool_.learned_size();
   for (std::size_t i = 0; i < slice.kept.size(); ++i) {
-    if (!(now_.weight[i] > kLeastWeight)) continue;
+    if (!(now_.weight[i] > kReported)) continue;
     const Kept& kept = slice.kept[i];
     Hypothesis& h = pool_.append();
     h.log_weight = std::log(now_.weight[i]);

@@ -65,7 +65,8 @@ class Settler {
   Slice open_;  ///< of the present time
   Smoothed now_;
   Smoothed past_;
-  std::vector<Kernel> group_;    ///< of the shares that are looked at
+  std::vector<Kernel> group_;  ///< of the shares that are looked at
+  std::vector<Prospect> prospects_;
   std::vector<double> weights_;  ///< theirs
   std::vector<double> pair_;     ///< one pair's moments
   std::vector<double> scratch_;

@@ -15,13 +15,22 @@
 namespace steelyard::engine {
 namespace {
 
+using RowMap = Eigen::Map<CoreMatrix>;
+
 // x ← L⁻¹ x by columns; what has no variance stays out.
-template <typename Columns>
-void solve_lower(const CoreMatrix& l, Columns& x) {
+template <typename Lower, typename Columns>
+void solve_lower(const Lower& l, Columns&& x) {
   for (Eigen::Index i = 0; i < l.rows(); ++i) {
     for (Eigen::Index k = 0; k < i; ++k) x.row(i) -= l(i, k) * x.row(k);
     x.row(i) *= l(i, i) > 0.0 ? 1.0 / l(i, i) : 0.0;
   }
+}
+
+template <typename Lower, typename Cov>
+void whiten(const Lower& root, Cov&& cov) {
+  solve_lower(root, cov);
+  cov.transposeInPlace();
+  solve_lower(root, cov);
 }
 
 void rotate(CoreMatrix& a, CoreMatrix& vectors, Eigen::Index p, Eigen::Index q) {
@@ -64,71 +73,99 @@ void diagonalise(CoreMatrix& symmetric, CoreMatrix& vectors) {
   }
 }
 
-void Evidence::mix(std::span<const Kernel> kernels, std::span<const double> shares) {
+Prospect Prospect::at(double* numbers, int states) {
+  double* cov = numbers + states;
+  double* group = cov + states * states;
+  return {numbers, cov, group, group + states};
+}
+
+void Evidence::prepare(std::span<const Prospect> group, std::span<const double> shares) {
   double total = 0.0;
   for (const double s : shares) total += s;
-  mean_.setZero(states_);
+  CoreVector mean = CoreVector::Zero(states_);
   for (std::size_t i = 0; i < shares.size(); ++i)
-    mean_ += shares[i] / total * Eigen::Map<const Eigen::VectorXd>(kernels[i].expected, states_);
+    mean += shares[i] / total * Eigen::Map<const Eigen::VectorXd>(group[i].mean, states_);
   cov_.setZero(states_, states_);
   for (std::size_t i = 0; i < shares.size(); ++i) {
-    const CoreVector step = Eigen::Map<const Eigen::VectorXd>(kernels[i].expected, states_) - mean_;
-    cov_ += shares[i] / total * Eigen::Map<const CoreMatrix>(kernels[i].predicted, states_, states_);
-    cov_ += shares[i] / total * step * step.transpose();
+    Eigen::Map<Eigen::VectorXd> step(group[i].mean, states_);
+    step -= mean;
+    cov_ += shares[i] / total * (RowMap(group[i].cov, states_, states_) + step * step.transpose());
   }
   cholesky(cov_, root_);
-}
-
-void Evidence::whiten(CoreMatrix& cov) const {
-  solve_lower(root_, cov);
-  cov.transposeInPlace();
-  solve_lower(root_, cov);
-}
-
-void Evidence::find_message(const double* smoothed_mean, const double* smoothed_cov, int dim) {
-  scratch_.resize(states_, states_);
-  for (int i = 0; i < states_; ++i)
-    for (int k = 0; k < states_; ++k) scratch_(i, k) = smoothed_cov[i * dim + k];
-  whiten(scratch_);
-  scratch_ = (0.5 * (scratch_ + scratch_.transpose())).eval();
-  diagonalise(scratch_, turn_);
-  CoreVector a = Eigen::Map<const Eigen::VectorXd>(smoothed_mean, states_) - mean_;
-  solve_lower(root_, a);
-  slope_ = turn_.transpose().lazyProduct(a);
-  precision_.resize(states_);
-  for (int i = 0; i < states_; ++i) {
-    const double variance = std::clamp(scratch_(i, i), 1e-12, 1.0);
-    precision_(i) = root_(i, i) > 0.0 ? std::sqrt(1.0 / variance - 1.0) : 0.0;
-    slope_(i) /= variance;
+  for (const Prospect& p : group) {
+    solve_lower(root_, Eigen::Map<Eigen::VectorXd>(p.mean, states_));
+    whiten(root_, RowMap(p.cov, states_, states_));
+    Eigen::Map<Eigen::VectorXd>(p.group_mean, states_) = mean;
+    RowMap(p.group_root, states_, states_) = root_;
   }
 }
 
-double Evidence::log_of(const Kernel& kernel) {
-  CoreMatrix s = Eigen::Map<const CoreMatrix>(kernel.predicted, states_, states_);
-  whiten(s);
-  s = CoreMatrix(turn_.transpose().lazyProduct(s)).lazyProduct(turn_).eval();
-  CoreVector m = Eigen::Map<const Eigen::VectorXd>(kernel.expected, states_) - mean_;
-  solve_lower(root_, m);
-  m = CoreVector(turn_.transpose().lazyProduct(m));
-  const CoreVector pull = s.lazyProduct(slope_);
-  double log = slope_.dot(m) + 0.5 * slope_.dot(pull);
-  CoreMatrix inner = precision_.asDiagonal() * s * precision_.asDiagonal();
-  inner.diagonal().array() += 1.0;
-  cholesky(inner, scratch_);
-  CoreVector rest = precision_.cwiseProduct(m + pull);
-  solve_lower(scratch_, rest);
-  log -= 0.5 * rest.squaredNorm();
-  for (int i = 0; i < states_; ++i) log -= std::log(scratch_(i, i));
-  return log;
+void Evidence::find_message(const Prospect& group, const double* smoothed_mean, const double* smoothed_cov,
+                            int dim) {
+  const RowMap root(group.group_root, states_, states_);
+  cov_.resize(states_, states_);
+  slope_.resize(states_);
+  for (int i = 0; i < states_; ++i) {
+    slope_(i) = smoothed_mean[i] - group.group_mean[i];
+    for (int k = 0; k < states_; ++k) cov_(i, k) = smoothed_cov[i * dim + k];
+  }
+  solve_lower(root, slope_);
+  whiten(root, cov_);
+  for (int i = 0; i < states_; ++i)
+    for (int k = 0; k < i; ++k) cov_(i, k) = cov_(k, i) = 0.5 * (cov_(i, k) + cov_(k, i));
+  diagonalise(cov_, turn_);
+  const CoreVector a = turn_.transpose().lazyProduct(slope_);
+  slope_.setZero();
+  precision_.resize(states_, states_);
+  for (int i = 0; i < states_; ++i) {
+    const double variance = std::clamp(cov_(i, i), 1e-12, 1.0);
+    slope_ += a(i) / variance * turn_.col(i);
+    precision_.col(i) = std::sqrt(1.0 / variance - 1.0) * turn_.col(i);
+  }
 }
 
-void Evidence::reweigh(std::span<const Kernel> kernels, const double* smoothed_mean,
+// Loops rather than matrix products: this runs for each pair of each step, and there are few states.
+double Evidence::log_of(const Prospect& p) {
+  const int n = states_;
+  seen_.setZero(n, n);  // S J^½
+  pulled_.resize(n);    // m + S h
+  double log = 0.0;
+  for (int i = 0; i < n; ++i) {
+    double pull = 0.0;
+    for (int l = 0; l < n; ++l) {
+      const double s = p.cov[i * n + l];
+      pull += s * slope_(l);
+      for (int k = 0; k < n; ++k) seen_(i, k) += s * precision_(l, k);
+    }
+    log += slope_(i) * (p.mean[i] + 0.5 * pull);
+    pulled_(i) = p.mean[i] + pull;
+  }
+  // The factor of M, row by row, and with it M^(−½) J^½ (m + Sh).
+  double determinant = 1.0;
+  for (int i = 0; i < n; ++i) {
+    double rest = 0.0;
+    for (int l = 0; l < n; ++l) rest += precision_(l, i) * pulled_(l);
+    for (int k = 0; k <= i; ++k) {
+      double sum = i == k ? 1.0 : 0.0;
+      for (int l = 0; l < n; ++l) sum += precision_(l, i) * seen_(l, k);
+      for (int l = 0; l < k; ++l) sum -= root_(i, l) * root_(k, l);
+      root_(i, k) = i == k ? std::sqrt(sum) : sum / root_(k, k);
+      if (k < i) rest -= root_(i, k) * cov_(k, 0);
+    }
+    determinant *= root_(i, i);
+    cov_(i, 0) = rest / root_(i, i);
+    log -= 0.5 * cov_(i, 0) * cov_(i, 0);
+  }
+  return log - std::log(determinant);
+}
+
+void Evidence::reweigh(std::span<const Prospect> group, const double* smoothed_mean,
                        const double* smoothed_cov, int dim, std::span<double> shares) {
   if (shares.size() < 2) return;
-  mix(kernels, shares);
-  find_message(smoothed_mean, smoothed_cov, dim);
+  find_message(group[0], smoothed_mean, smoothed_cov, dim);
+  root_.resize(states_, states_);
   logs_.clear();
-  for (const Kernel& kernel : kernels) logs_.push_back(log_of(kernel));
+  for (const Prospect& p : group) logs_.push_back(log_of(p));
   const double top = *std::max_element(logs_.begin(), logs_.end());
   double before = 0.0;
   double after = 0.0;

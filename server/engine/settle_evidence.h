@@ -8,35 +8,49 @@
 #include <span>
 #include <vector>
 
-#include "engine/settle_kernel.h"
+#include "engine/discretise.h"
+#include "engine/hypothesis.h"
 
 namespace steelyard::engine {
+
+/// Where one ancestor's states were predicted to be, as seen from where they were predicted to be by all of a
+/// group together: in coordinates in which that is N(0, 1). Stands at the end of each kernel.
+struct Prospect {
+  double* mean = nullptr;        ///< n = number of states
+  double* cov = nullptr;         ///< n × n
+  double* group_mean = nullptr;  ///< n: of the whole group, as it is
+  double* group_root = nullptr;  ///< n × n, lower: its covariance is root · rootᵀ
+  [[nodiscard]] static std::size_t size(int states) {
+    return static_cast<std::size_t>(2 * states * (1 + states));
+  }
+  [[nodiscard]] static Prospect at(double* numbers, int states);
+};
 
 class Evidence {
  public:
   explicit Evidence(const Layout& layout) : states_(layout.states) {}
 
-  /// Shares of ancestors that have equal conditions, so that what was predicted for them differs by their
-  /// machine modes alone. Rescales `shares` (their sum stays) by the probability that each predicted what the
-  /// states have turned out to be, whose smoothed moments are given (of all of z, `dim` numbers); kernels[i]
-  /// belongs to shares[i].
-  void reweigh(std::span<const Kernel> kernels, const double* smoothed_mean, const double* smoothed_cov,
+  /// A group: shares of ancestors that have equal conditions, so that what was predicted for them differs by
+  /// their machine modes alone. On entry `mean` and `cov` are as they are; all else is filled.
+  void prepare(std::span<const Prospect> group, std::span<const double> shares);
+
+  /// Rescales `shares` (their sum stays) by the probability that each predicted what the states have turned
+  /// out to be, whose smoothed moments are given (of all of z, `dim` numbers).
+  void reweigh(std::span<const Prospect> group, const double* smoothed_mean, const double* smoothed_cov,
                int dim, std::span<double> shares);
 
  private:
-  void mix(std::span<const Kernel> kernels, std::span<const double> shares);
-  void find_message(const double* smoothed_mean, const double* smoothed_cov, int dim);
-  [[nodiscard]] double log_of(const Kernel& kernel);
-  void whiten(CoreMatrix& cov) const;
+  void find_message(const Prospect& group, const double* smoothed_mean, const double* smoothed_cov, int dim);
+  [[nodiscard]] double log_of(const Prospect& prospect);
 
   int states_;
-  CoreVector mean_;       ///< b: predicted for all of them together
-  CoreMatrix cov_;        ///< B
-  CoreMatrix root_;       ///< B = root · rootᵀ
-  CoreMatrix turn_;       ///< the smoothed covariance is diagonal in its columns, in whitened coordinates
+  CoreMatrix cov_;  ///< scratch
+  CoreMatrix root_;
+  CoreMatrix turn_;
   CoreVector slope_;      ///< h
-  CoreVector precision_;  ///< √J
-  CoreMatrix scratch_;
+  CoreMatrix precision_;  ///< J^½: J = precision · precisionᵀ
+  CoreMatrix seen_;       ///< scratch of log_of()
+  CoreVector pulled_;
   std::vector<double> logs_;
 };
 

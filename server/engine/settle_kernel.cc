@@ -89,10 +89,11 @@ void solve_semidefinite(Eigen::MatrixXd& s, const Eigen::MatrixXd& cross, Eigen:
   gain = gain * scale.asDiagonal();
 }
 
-Kernel kernel_at(const double* at, int rows, int columns) {
-  const double* gain = at + rows + columns;
-  const double* left = gain + rows * columns;
-  return {at, at + rows, gain, left, left + rows * rows, rows, columns};
+Kernel kernel_at(double* at, int rows, int columns, int states) {
+  double* expected = at + rows;
+  double* gain = expected + columns;
+  double* left = gain + rows * columns;
+  return {at, expected, gain, left, Prospect::at(left + rows * rows, states), rows, columns};
 }
 
 void Kernel::apply(const double* after_mean, const double* after_cov, double* scratch, double* mean_out,
@@ -221,7 +222,9 @@ void KernelMaker::write(const double* mean, int columns, double* out) const {
   Eigen::Map<RowMajor>(left, n, n) = 0.5 * (left_ + left_.transpose());
   // The states are carried first.
   const int states = layout_.states;
-  Eigen::Map<RowMajor>(left + n * n, states, states) = predicted_.topLeftCorner(states, states);
+  const Prospect prospect = Prospect::at(left + n * n, states);
+  std::copy(expected, expected + states, prospect.mean);
+  Eigen::Map<RowMajor>(prospect.cov, states, states) = predicted_.topLeftCorner(states, states);
 }
 
 void KernelMaker::make(const Slice& before, int i, Slice& after, int k) {

@@ -6,6 +6,7 @@
 #include <Eigen/Core>
 #include <vector>
 
+#include "engine/settle_evidence.h"
 #include "engine/settle_slice.h"
 
 namespace steelyard::engine {
@@ -13,11 +14,11 @@ namespace steelyard::engine {
 /// z(before) = mean + gain · (z(after) − expected) + N(0, left). Columns of `gain` for what only the later
 /// hypothesis carries are zero: it is new, hence independent of what was.
 struct Kernel {
-  const double* mean = nullptr;       ///< rows
-  const double* expected = nullptr;   ///< columns
-  const double* gain = nullptr;       ///< rows × columns
-  const double* left = nullptr;       ///< rows × rows
-  const double* predicted = nullptr;  ///< states × states: covariance that goes with `expected`
+  const double* mean = nullptr;      ///< rows
+  const double* expected = nullptr;  ///< columns
+  const double* gain = nullptr;      ///< rows × columns
+  const double* left = nullptr;      ///< rows × rows
+  Prospect prospect;                 ///< of the states
   int rows = 0;
   int columns = 0;
 
@@ -25,12 +26,12 @@ struct Kernel {
   void apply(const double* after_mean, const double* after_cov, double* scratch, double* mean_out,
              double* cov_out) const;
   [[nodiscard]] static std::size_t size(int rows, int columns, int states) {
-    return static_cast<std::size_t>(rows + columns + rows * columns + rows * rows + states * states);
+    return static_cast<std::size_t>(rows + columns + rows * columns + rows * rows) + Prospect::size(states);
   }
 };
 
 /// Reads the kernel that stands at `at`.
-[[nodiscard]] Kernel kernel_at(const double* at, int rows, int columns);
+[[nodiscard]] Kernel kernel_at(double* at, int rows, int columns, int states);
 
 class KernelMaker {
  public:

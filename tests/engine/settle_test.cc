@@ -705,17 +705,20 @@ TEST(Settle, AncestorsAreWeighedByWhatTheyPredicted) {
                                         square(x - b) / spread)) /
                        std::sqrt(variance[i]);
     const double expected = shares[0] * integral[0] / (shares[0] * integral[0] + shares[1] * integral[1]);
-    std::array<Kernel, 2> kernels;
+    std::array<std::array<double, 4>, 2> numbers{};
+    std::array<Prospect, 2> group;
     for (std::size_t i = 0; i < 2; ++i) {
-      kernels[i].expected = &mean[i];
-      kernels[i].predicted = &variance[i];
+      numbers[i] = {mean[i], variance[i], 0.0, 0.0};
+      group[i] = Prospect::at(numbers[i].data(), 1);
     }
-    Evidence(layout).reweigh(kernels, &after, &left, 1, shares);
+    Evidence evidence(layout);
+    evidence.prepare(group, shares);
+    evidence.reweigh(group, &after, &left, 1, shares);
     EXPECT_NEAR(shares[0] / 0.3, expected, 1e-6) << "round " << round;
     EXPECT_NEAR(shares[0] + shares[1], 0.3, 1e-15);
     // Nothing came after: nothing changes.
     shares = {0.3 * share, 0.3 * (1.0 - share)};
-    Evidence(layout).reweigh(kernels, &b, &spread, 1, shares);
+    evidence.reweigh(group, &b, &spread, 1, shares);
     EXPECT_NEAR(shares[0], 0.3 * share, 1e-12);
   }
 }
