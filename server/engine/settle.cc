@@ -13,7 +13,8 @@ namespace steelyard::engine {
 namespace {
 
 constexpr double kFollowed = 1e-12;  // smoothed weight under which a hypothesis is not followed further back
-constexpr double kReported = 1e-20;  // and is not reported, as in Options::weight_floor
+constexpr double kWorthWeighing = 100.0;  // groups with so many times the negligible weight ask the future
+constexpr double kReported = 1e-20;       // and is not reported, as in Options::weight_floor
 
 }  // namespace
 
@@ -147,7 +148,8 @@ void Settler::step_group(const Slice& before, Slice& after, int k, int begin, in
   const double* moments = now_.moments.data() + to.at;
   if (sum >= settling_.negligible) {
     find_kernels(before, after, k, shares);
-    evidence_.reweigh(prospects_, moments, moments + to.dim, to.dim, weights_);
+    if (sum >= kWorthWeighing * settling_.negligible)
+      evidence_.reweigh(prospects_, moments, moments + to.dim, to.dim, weights_);
   }
   for (std::size_t s = 0; s < shares.size(); ++s) {
     const int i = shares[s].ancestor;

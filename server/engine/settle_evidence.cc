@@ -56,14 +56,15 @@ void rotate(CoreMatrix& a, CoreMatrix& vectors, Eigen::Index p, Eigen::Index q) 
 }  // namespace
 
 void diagonalise(CoreMatrix& symmetric, CoreMatrix& vectors) {
-  constexpr int kSweeps = 30;  // five or six are enough
+  constexpr int kSweeps = 30;     // four or five are enough
+  constexpr double kOff = 1e-10;  // convergence is quadratic: the last sweep leaves far less
   const auto n = symmetric.rows();
   vectors.setIdentity(n, n);
   for (int sweep = 0; sweep < kSweeps; ++sweep) {
     bool done = true;
     for (Eigen::Index p = 0; p < n; ++p) {
       for (Eigen::Index q = p + 1; q < n; ++q) {
-        if (!(std::fabs(symmetric(p, q)) > 1e-15 * (std::fabs(symmetric(p, p)) + std::fabs(symmetric(q, q)))))
+        if (!(std::fabs(symmetric(p, q)) > kOff * (std::fabs(symmetric(p, p)) + std::fabs(symmetric(q, q)))))
           continue;
         rotate(symmetric, vectors, p, q);
         done = false;

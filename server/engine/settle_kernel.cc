@@ -93,14 +93,20 @@ Kernel kernel_at(double* at, int rows, int columns, int states) {
   double* expected = at + rows;
   double* gain = expected + columns;
   double* left = gain + rows * columns;
-  return {at, expected, gain, left, Prospect::at(left + rows * rows, states), rows, columns};
+  double* held = left + rows * rows;
+  return {at, expected, gain, left, held, Prospect::at(held + rows, states), rows, columns};
 }
 
 void Kernel::apply(const double* after_mean, const double* after_cov, double* scratch, double* mean_out,
                    double* cov_out) const {
   for (int i = 0; i < rows; ++i) {
-    const double* g = gain + i * columns;
     double* row = scratch + i * columns;
+    if (const int column = static_cast<int>(held[i]); column >= 0) {
+      mean_out[i] = after_mean[column];
+      std::copy_n(after_cov + column * columns, columns, row);
+      continue;
+    }
+    const double* g = gain + i * columns;
     std::fill_n(row, columns, 0.0);
     mean_out[i] = mean[i];
     for (int l = 0; l < columns; ++l) {
@@ -108,13 +114,17 @@ void Kernel::apply(const double* after_mean, const double* after_cov, double* sc
       for (int k = 0; k < columns; ++k) row[k] += g[l] * after_cov[l * columns + k];
     }
   }
-  for (int i = 0; i < rows; ++i) {
-    for (int k = 0; k <= i; ++k) {
-      double sum = left[i * rows + k];
-      for (int l = 0; l < columns; ++l) sum += scratch[i * columns + l] * gain[k * columns + l];
-      cov_out[i * rows + k] = cov_out[k * rows + i] = sum;
-    }
-  }
+  for (int i = 0; i < rows; ++i)
+    for (int k = 0; k <= i; ++k) cov_out[i * rows + k] = cov_out[k * rows + i] = covariance(scratch, i, k);
+}
+
+// Of rows i and k; the scratch has gain · after_cov.
+double Kernel::covariance(const double* scratch, int i, int k) const {
+  if (held[k] >= 0.0) return scratch[i * columns + static_cast<int>(held[k])];
+  if (held[i] >= 0.0) return scratch[k * columns + static_cast<int>(held[i])];
+  double sum = left[i * rows + k];
+  for (int l = 0; l < columns; ++l) sum += scratch[i * columns + l] * gain[k * columns + l];
+  return sum;
 }
 
 void KernelMaker::find_carried(const Kept& before, const Kept& after, const Slice& slice) {
@@ -208,6 +218,20 @@ void KernelMaker::predict(const double* mean, const Slice& slice, const Move& mo
   }
 }
 
+// What neither moves nor is driven, as a bias, was what it is: said exactly, and cheap to apply.
+void KernelMaker::hold_constants() {
+  held_.assign(static_cast<std::size_t>(cov_.rows()), -1);
+  for (std::size_t c = 0; c < carried_.size(); ++c) {
+    const int row = carried_[c].before;
+    const auto a = static_cast<Eigen::Index>(c);
+    const bool moves = rows_(a, row) != 1.0 || rows_.row(a).cwiseAbs().sum() != 1.0;
+    if (moves || noise_.row(a).cwiseAbs().sum() != 0.0) continue;
+    held_[static_cast<std::size_t>(row)] = carried_[c].after;
+    gain_.row(row).setZero();
+    gain_(row, a) = 1.0;
+  }
+}
+
 void KernelMaker::write(const double* mean, int columns, double* out) const {
   const int n = static_cast<int>(cov_.rows());
   double* expected = std::copy(mean, mean + n, out);
@@ -222,7 +246,9 @@ void KernelMaker::write(const double* mean, int columns, double* out) const {
   Eigen::Map<RowMajor>(left, n, n) = 0.5 * (left_ + left_.transpose());
   // The states are carried first.
   const int states = layout_.states;
-  const Prospect prospect = Prospect::at(left + n * n, states);
+  double* held = left + n * n;
+  for (int r = 0; r < n; ++r) held[r] = held_[static_cast<std::size_t>(r)];
+  const Prospect prospect = Prospect::at(held + n, states);
   std::copy(expected, expected + states, prospect.mean);
   Eigen::Map<RowMajor>(prospect.cov, states, states) = predicted_.topLeftCorner(states, states);
 }
@@ -234,6 +260,7 @@ void KernelMaker::make(const Slice& before, int i, Slice& after, int k) {
   cov_ = Eigen::Map<const RowMajor>(mean + from.dim, from.dim, from.dim);
   carried_.clear();
   gain_.resize(from.dim, 0);
+  held_.assign(static_cast<std::size_t>(from.dim), -1);
   left_ = cov_;
   predicted_.setZero(layout_.states, layout_.states);
   // What has a share has moved; were it not so, what was filtered would stay.
@@ -248,6 +275,7 @@ void KernelMaker::make(const Slice& before, int i, Slice& after, int k) {
     predicted_ += noise_;
     left_ = predicted_;
     solve_semidefinite(left_, cross, gain_);
+    hold_constants();
     Eigen::MatrixXd rest = Eigen::MatrixXd::Identity(from.dim, from.dim);
     rest -= gain_.lazyProduct(rows_);
     left_ = Eigen::MatrixXd(rest.lazyProduct(cov_)).lazyProduct(rest.transpose());

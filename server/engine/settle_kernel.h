@@ -18,15 +18,18 @@ struct Kernel {
   const double* expected = nullptr;  ///< columns
   const double* gain = nullptr;      ///< rows × columns
   const double* left = nullptr;      ///< rows × rows
-  Prospect prospect;                 ///< of the states
+  const double* held = nullptr;  ///< rows: the column that a row just keeps, as a constant does; −1: none
+  Prospect prospect;             ///< of the states
   int rows = 0;
   int columns = 0;
 
   /// Moments of z(before) for z(after) ~ N(mean, cov); `scratch` has rows × columns numbers.
   void apply(const double* after_mean, const double* after_cov, double* scratch, double* mean_out,
              double* cov_out) const;
+  [[nodiscard]] double covariance(const double* scratch, int i, int k) const;
   [[nodiscard]] static std::size_t size(int rows, int columns, int states) {
-    return static_cast<std::size_t>(rows + columns + rows * columns + rows * rows) + Prospect::size(states);
+    return static_cast<std::size_t>(2 * rows + columns + rows * columns + rows * rows) +
+           Prospect::size(states);
   }
 };
 
@@ -52,6 +55,7 @@ class KernelMaker {
   void add_fresh_noise(const Slice& before, const Slice& after, int k);
   void fill_transition(const Kept& before, const Slice& slice, const Move& move);
   void predict(const double* mean, const Slice& slice, const Move& move);
+  void hold_constants();
   void write(const double* mean, int columns, double* out) const;
 
   const Model& model_;
@@ -68,6 +72,7 @@ class KernelMaker {
   Eigen::MatrixXd gain_;
   Eigen::MatrixXd left_;
   Eigen::MatrixXd predicted_;  ///< covariance of what is carried
+  std::vector<int> held_;      ///< by row, in `carried_`
 };
 
 /// gain · s = cross for a covariance s that may be singular: a coordinate that others determine, or that has
