@@ -32,7 +32,7 @@ struct Options {
   bool words = false;
   TimeStyle time = TimeStyle::kSeconds;
   bool settled = false;
-  std::string report;    // not yet there
+  std::string report;  // not yet there
   std::string episodes;
 };
 
