@@ -246,7 +246,7 @@ TEST(Settle, AnOnsetIsSettledToTheMoment) {
 
 // A vector channel and a scalar one for each of two levels; the vector channel is off by 4 sd for a while.
 TEST(Settle, AVectorChannelsOffsetIsSeenThrough) {
-  Random random(11);
+  suite::Random random(11);
   Model model;
   for (const char* name : {"x", "y"}) {
     model.states.push_back(outside::state(name, 0.0, 1.0, 0.1, {0.0, 0.0}));
