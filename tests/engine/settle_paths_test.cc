@@ -107,6 +107,7 @@ class Paths {
 Model switching_channels() {
   Model model = kalman_model();
   model.options.conditions[static_cast<std::size_t>(Condition::kOffset)] = true;
+  model.options.born_faulty = false;
   model.response_s = 1e15;  // walks fall with it: the offset is constant
   model.states = {outside::state("x", 20.0, 1.0, 0.05, {0.0})};
   for (const char* name : {"y1", "y2"}) {
