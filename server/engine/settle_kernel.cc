@@ -203,13 +203,19 @@ void KernelMaker::predict(const double* mean, const Slice& slice, const Move& mo
   const double* shift = slice.paths.data() + move.shift;
   const double* noise = slice.paths.data() + move.noise;
   const Eigen::Map<const Eigen::VectorXd> before(mean, move.dim);
+  const int own = move.dim - layout_.fixed;
+  const auto noise_of = [&](int i, int k) {
+    if (i < layout_.core && k < layout_.core) return noise[i * layout_.core + k];
+    if (i < layout_.fixed || k < layout_.fixed) return 0.0;
+    return noise[layout_.core * layout_.core + (i - layout_.fixed) * own + k - layout_.fixed];
+  };
   rows_.resize(c, move.dim);
   noise_.resize(c, c);
   for (Eigen::Index a = 0; a < c; ++a) {
     const int ia = carried_[static_cast<std::size_t>(a)].before;
     rows_.row(a) = transition_.row(ia);
     for (Eigen::Index b = 0; b < c; ++b)
-      noise_(a, b) = noise[ia * move.dim + carried_[static_cast<std::size_t>(b)].before];
+      noise_(a, b) = noise_of(ia, carried_[static_cast<std::size_t>(b)].before);
   }
   expected_ = rows_.lazyProduct(before);
   for (Eigen::Index a = 0; a < c; ++a) {

@@ -79,7 +79,11 @@ void Slice::keep_moves(const Pool& shadows, const std::vector<CoreMatrix>& trans
       const Hypothesis& h = shadows[i];
       const auto dim = static_cast<std::size_t>(h.dim);
       const std::size_t shift = append(paths, h.mean, dim);
-      const std::size_t noise = append(paths, h.cov, dim * dim);
+      // Between the core and the channels' own numbers stands what has no noise of its own.
+      const std::size_t noise = paths.size();
+      for (int r = 0; r < layout.core; ++r) append(paths, h.cov + r * h.dim, core);
+      for (int r = layout.fixed; r < h.dim; ++r)
+        append(paths, h.cov + r * h.dim + layout.fixed, static_cast<std::size_t>(h.dim - layout.fixed));
       moves.push_back({h.conditions, h.mode, h.dim, transition, shift, noise});
     }
   }

@@ -28,7 +28,7 @@ struct Move {
   int dim = 0;
   std::size_t transition = 0;  ///< in Slice::paths: core × core
   std::size_t shift = 0;       ///< dim: shift of the core, then factors of the rest that everyone carries
-  std::size_t noise = 0;       ///< dim × dim
+  std::size_t noise = 0;       ///< core × core, then that of the numbers behind Layout::fixed
 };
 
 /// A share of a hypothesis's weight, and the hypothesis of the slice before from which it came.
