@@ -31,8 +31,8 @@ struct Options {
   std::string channels;
   bool words = false;
   TimeStyle time = TimeStyle::kSeconds;
-  bool settled = false;  // not yet there
-  std::string report;    // not yet there
+  bool settled = false;
+  std::string report;  // not yet there
   std::string episodes;
 };
 
@@ -53,7 +53,7 @@ class Replay {
       : options_(options),
         rig_(std::move(rig)),
         names_(names_of_model(*rig_->model)),
-        timeline_(rig_),
+        timeline_(timeline()),
         source_(timeline_.source_number(file.name)),
         join_ns_(static_cast<engine::TimeNs>(rig_->response_s * kNsPerS)),
         stretches_(names_.channels.size(), join_ns_),
@@ -117,10 +117,25 @@ class Replay {
     }
   }
 
+  timeline::Timeline timeline() {
+    if (!options_.settled) return timeline::Timeline(rig_);
+    const bool full = with_channels() || options_.words || with_episodes();
+    return {rig_, full ? engine::Detail::kFull : engine::Detail::kBrief,
+            [this](const engine::Estimate& settled) {
+              estimate_ = settled;
+              row();
+            }};
+  }
+
   void moment(engine::TimeNs time_ns) {
-    if (!going()) return;
+    if (!going() || options_.settled) return;
     const auto detail = with_channels() ? engine::Detail::kFull : engine::Detail::kBrief;
     timeline_.estimate(time_ns, detail, estimate_);
+    row();
+  }
+
+  void row() {
+    if (!going()) return;
     text_.clear();
     append_estimate_row(text_, estimate_, options_.time);
     out_.write(text_);
@@ -150,9 +165,9 @@ class Replay {
     return calls;
   }
 
-  /// Of the moment at hand. Few moments need it.
+  /// Of the moment at hand. Few moments need it; settled estimates come with all detail if anything does.
   const engine::Estimate& full() {
-    if (with_channels()) return estimate_;
+    if (with_channels() || options_.settled) return estimate_;
     if (!has_full_) timeline_.estimate(estimate_.time_ns, engine::Detail::kFull, full_);
     has_full_ = true;
     return full_;
@@ -195,6 +210,10 @@ class Replay {
   }
 
   void notes() {
+    if (const auto early = timeline_.engine().settled_early(); early > 0)
+      log_.progress().say(
+          "steelyard: " + std::to_string(early) +
+          " estimates were settled before the lag was over: it holds more readings than are kept");
     for (std::size_t i = 0; i < out_of_range_.size(); ++i) {
       if (out_of_range_[i] == 0) continue;
       log_.progress().say("steelyard: " + names_.channels[i] + ": " + std::to_string(out_of_range_[i]) +
@@ -203,6 +222,7 @@ class Replay {
   }
 
   int finish() {
+    if (going()) timeline_.settle_rest();
     if ((options_.words || with_episodes()) && going()) summarise();
     notes();
     const bool all_used = log_.close();
@@ -237,8 +257,8 @@ class Replay {
 };
 
 int replay(const Options& options) {
-  if (options.settled || !options.report.empty()) {
-    complain("replay: --settled and --report are not there yet");
+  if (!options.report.empty()) {
+    complain("replay: --report is not there yet");
     return kWrongInput;
   }
   if (!options.out.empty() && options.out == options.channels) {
@@ -279,7 +299,8 @@ void add_replay(CLI::App& app, Run& run) {
       "Tell each change of a channel and the stretches in which it was not sound, in words, on stderr "
       "(on stdout if --out is given)");
   add_time_option(*command, options->time);
-  command->add_flag("--settled", options->settled, "Not there yet");
+  command->add_flag("--settled", options->settled,
+                    "Write settled estimates: each from the readings up to the rig's lag after it as well");
   command->add_option("--report", options->report, "Not there yet")->type_name("FILE");
   command
       ->add_option(

@@ -9,6 +9,7 @@
 
 #include "engine/normal.h"
 #include "engine/posterior.h"
+#include "engine/settle.h"
 #include "engine/time.h"
 
 namespace steelyard::engine {
@@ -87,10 +88,15 @@ Fate Posterior::read(TimeNs t, int channel, std::span<const double> values, Qual
   auto& memory = channels[static_cast<std::size_t>(channel)];
   if (!started) start(t);
   time = t;
+  if (settler) {
+    heed_silence(t);
+    advance(t);  // settled estimates have a slice at every time of reading, whatever becomes of the reading
+    settler->reading();
+  }
   if (quality != Quality::kGood && quality != Quality::kUncertain) return Fate::kNotUsable;
   if (memory.seen_any && c.period_s > 0.0 && !c.on_change) {
     const double missed = std::max(0.0, std::round(seconds(t - memory.seen_at) / c.period_s) - 1.0);
-    memory.losses.learn(missed, 1.0 - silent(channel, t), seconds(t - memory.seen_at));
+    memory.losses.learn(missed, 1.0 - silent(memory, channel, t), seconds(t - memory.seen_at));
   }
   memory.seen_any = true;
   memory.seen_at = t;
@@ -299,6 +305,11 @@ Engine::Engine(std::shared_ptr<const Model> model) {
   impl_ = std::make_unique<Impl>(std::move(model));
 }
 
+Engine::Engine(std::shared_ptr<const Model> model, Settling settling) : Engine(std::move(model)) {
+  impl_ = std::make_unique<Impl>(impl_->model, true);
+  impl_->settler = std::make_unique<Settler>(*impl_, std::move(settling));
+}
+
 Engine::Engine(const Engine& other) : impl_(std::make_unique<Impl>(*other.impl_)) {}
 
 Engine& Engine::operator=(const Engine& other) {
@@ -317,6 +328,12 @@ void Engine::set_input(TimeNs t, int input, double value, bool good) {
 Fate Engine::read(TimeNs t, int channel, std::span<const double> values, Quality quality, int source) {
   return impl_->read(t, channel, values, quality, source);
 }
+
+void Engine::settle_rest() {
+  if (impl_->settler && impl_->started) impl_->settler->finish(*impl_);
+}
+
+std::int64_t Engine::settled_early() const { return impl_->settler ? impl_->settler->early() : 0; }
 
 TimeNs Engine::time() const { return impl_->time; }
 bool Engine::started() const { return impl_->started; }

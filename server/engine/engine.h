@@ -10,6 +10,7 @@
 #pragma once
 
 #include <cstdint>
+#include <functional>
 #include <memory>
 #include <span>
 #include <vector>
@@ -30,9 +31,23 @@ enum class Fate : std::uint8_t {
 /// kBrief leaves out what costs most: intervals, peaks, explanations.
 enum class Detail : std::uint8_t { kBrief, kFull };
 
+/// Asks for settled estimates: of each time at which a channel was read, from exactly the readings and inputs
+/// up to lag_ns later. They cost memory and time that live estimates alone do not.
+struct Settling {
+  TimeNs lag_ns = 0;  ///< ≥ 0
+  Detail detail = Detail::kBrief;
+  std::function<void(const Estimate&)> settled;  ///< called from within set_input(), read() and settle_rest()
+  double negligible =
+      1e-6;               ///< pairs of hypotheses with less of the weight give no moments: a compute budget
+  int max_slices = 4096;  ///< distinct times within a lag; beyond, the oldest is settled early
+  std::size_t max_bytes = std::size_t{256} << 20U;  ///< of all slices together; likewise
+};
+
 class Engine {
  public:
   explicit Engine(std::shared_ptr<const Model> model);
+  /// An engine that settles as well. Only this one does: a copy of it goes on without.
+  Engine(std::shared_ptr<const Model> model, Settling settling);
   Engine(const Engine& other);
   Engine& operator=(const Engine& other);
   Engine(Engine&&) noexcept;
@@ -52,6 +67,11 @@ class Engine {
   /// The posterior at t ≥ time(), extrapolated without changing this engine's posterior (scratch storage is
   /// used, hence not const). Reuses the storage of `out`.
   void estimate(TimeNs t, Detail detail, Estimate& out);
+
+  /// Settles all that is left with the readings there are. To be called once, after the last reading.
+  void settle_rest();
+  /// Estimates that were settled early because of a limit.
+  [[nodiscard]] std::int64_t settled_early() const;
 
   [[nodiscard]] TimeNs time() const;  ///< of the newest reading or input; meaningless while !started()
   [[nodiscard]] bool started() const;

@@ -13,7 +13,7 @@ namespace steelyard::engine {
 
 static_assert(sizeof(Gamma) == 2 * sizeof(double), "Gammas live in the same storage as the moments");
 
-Layout::Layout(const Model& model)
+Layout::Layout(const Model& model, bool with_lineage)
     : states(static_cast<int>(model.states.size())),
       core(states + static_cast<int>(model.inputs.size())),
       fixed(core),
@@ -35,6 +35,7 @@ Layout::Layout(const Model& model)
   for (std::size_t j = 0; j < model.channels.size(); ++j)
     if (model.channels[j].correlation > 0.0) colour_at[j] = fixed++;
   max_dim = fixed + 2 * parts;
+  if (with_lineage) lineage = 2 * model.options.max_hypotheses;
 }
 
 Pool::Pool(const Layout& layout, int capacity)
@@ -42,7 +43,8 @@ Pool::Pool(const Layout& layout, int capacity)
       mean_size_(static_cast<std::size_t>(layout.max_dim)),
       cov_size_(mean_size_ * mean_size_),
       learned_size_(5 * channels_ + static_cast<std::size_t>(layout.shape_size)),
-      block_(mean_size_ + cov_size_ + learned_size_),
+      lineage_size_(static_cast<std::size_t>(layout.lineage)),
+      block_(mean_size_ + cov_size_ + learned_size_ + lineage_size_),
       items_(static_cast<std::size_t>(capacity)),
       block_of_(static_cast<std::size_t>(capacity)) {
   storage_.resize(block_ * items_.size());
@@ -55,6 +57,7 @@ Pool::Pool(const Pool& other)
       mean_size_(other.mean_size_),
       cov_size_(other.cov_size_),
       learned_size_(other.learned_size_),
+      lineage_size_(other.lineage_size_),
       block_(other.block_),
       size_(other.size_),
       storage_(other.storage_),
@@ -69,6 +72,7 @@ Pool& Pool::operator=(const Pool& other) {
   mean_size_ = other.mean_size_;
   cov_size_ = other.cov_size_;
   learned_size_ = other.learned_size_;
+  lineage_size_ = other.lineage_size_;
   block_ = other.block_;
   size_ = other.size_;
   storage_ = other.storage_;
@@ -88,6 +92,7 @@ void Pool::point_into_storage() {
     items_[i].walk = reinterpret_cast<Gamma*>(learned + 2 * channels_);
     items_[i].since = learned + 4 * channels_;
     items_[i].shape = learned + 5 * channels_;
+    items_[i].lineage = learned + learned_size_;
   }
 }
 
@@ -102,7 +107,7 @@ void Pool::assign(Hypothesis& to, const Hypothesis& from) const {
   const auto dim = static_cast<std::size_t>(from.dim);
   std::memcpy(to.mean, from.mean, dim * sizeof(double));
   std::memcpy(to.cov, from.cov, dim * dim * sizeof(double));
-  std::memcpy(to.noise, from.noise, learned_size_ * sizeof(double));
+  std::memcpy(to.noise, from.noise, (learned_size_ + lineage_size_) * sizeof(double));
 }
 
 Hypothesis& Pool::append_copy(const Hypothesis& from) {
@@ -254,6 +259,7 @@ void merge(Hypothesis& into, const Hypothesis& from, const Layout& layout) {
   for (std::size_t j = 0; j < static_cast<std::size_t>(layout.channels); ++j)
     if (layout.shape_at[j] >= 0)
       mix_shapes(into.shape + layout.shape_at[j], from.shape + layout.shape_at[j], layout.part_count[j], p);
+  for (int i = 0; i < layout.lineage; ++i) into.lineage[i] += p * (from.lineage[i] - into.lineage[i]);
   into.log_weight = total;
 }
 

@@ -18,13 +18,14 @@ namespace steelyard::engine {
 
 /// Where things stand in z, the same for all hypotheses of a model.
 struct Layout {
-  explicit Layout(const Model& model);
+  explicit Layout(const Model& model, bool with_lineage = false);
   int states = 0;
   int core = 0;   ///< states + inputs: what moves by the machine's law
   int fixed = 0;  ///< core + biases + correlated noises: what every hypothesis carries
   int channels = 0;
   int parts = 0;                               ///< of all channels together
   int max_dim = 0;                             ///< fixed + 2 · parts
+  int lineage = 0;                             ///< numbers in a hypothesis's lineage; 0: not kept
   int shape_size = 0;                          ///< numbers in a hypothesis's shapes
   std::array<int, kMaxChannels> first_part{};  ///< of a channel, among the parts of all channels
   std::array<int, kMaxChannels> part_count{};
@@ -88,6 +89,8 @@ struct Hypothesis {
   Gamma* noise = nullptr;   ///< by channel: relative precision κ; of a vector channel 2a is Wishart's ν
   Gamma* walk = nullptr;    ///< by channel: precision of the offset's walk, relative to its condition's speed
   double* since = nullptr;  ///< by channel: mean time in s at which it stopped being sound; unused if it is
+  double* lineage =
+      nullptr;  ///< share of the weight that came from each hypothesis of the last slice (settle.h)
   double* shape = nullptr;  ///< of vector channels: mean relative precision, parts × parts (Layout::shape_at)
 
   [[nodiscard]] double& p(int i, int k) { return cov[i * dim + k]; }
@@ -120,6 +123,8 @@ class Pool {
   Hypothesis& append_copy(const Hypothesis& from);
   void clear() { size_ = 0; }
   void shrink(int size) { size_ = size; }
+  /// Numbers, from `noise` on, that a hypothesis has besides its moments and its lineage.
+  [[nodiscard]] std::size_t learned_size() const { return learned_size_; }
   void swap_items(int i, int k);
   /// End of the run of equal conditions that begins at `begin`; the pool must be in the order of keys.
   [[nodiscard]] int group_end(int begin) const;
@@ -132,7 +137,8 @@ class Pool {
   std::size_t mean_size_ = 0;
   std::size_t cov_size_ = 0;
   std::size_t learned_size_ = 0;  ///< noise, walk, since, shape
-  std::size_t block_ = 0;         ///< doubles a hypothesis: mean, cov, learned
+  std::size_t lineage_size_ = 0;
+  std::size_t block_ = 0;  ///< doubles a hypothesis: mean, cov, learned
   int size_ = 0;
   std::vector<double> storage_;
   std::vector<Hypothesis> items_;

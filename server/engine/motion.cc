@@ -135,9 +135,15 @@ void Motion::linearise(const Hypothesis& h, double time_s, double dt_s) {
   fill(local_, slope, drive, dt_s);
 }
 
-void Motion::predict(std::span<Hypothesis> group, const Walks& walks) {
+void Motion::move(std::span<Hypothesis> group, const Gap& gap, const Trail& trail) {
+  for (Hypothesis& h : group) apply(h, gap);
+  for (Hypothesis& h : trail.shadows) apply(h, gap);
+  if (trail.transition) *trail.transition = CoreMatrix(gap.move.transition.lazyProduct(*trail.transition));
+}
+
+void Motion::predict(std::span<Hypothesis> group, const Walks& walks, const Trail& trail) {
   if (affine_) {
-    for (Hypothesis& h : group) apply(h, *affine_gap_);
+    move(group, *affine_gap_, trail);
   } else {
     const double wanted = std::ceil(gap_s_ * kStepsPerResponse / model_.response_s);
     const int steps = static_cast<int>(std::clamp(wanted, 1.0, static_cast<double>(kMaxSteps)));
@@ -149,10 +155,11 @@ void Motion::predict(std::span<Hypothesis> group, const Walks& walks) {
         [](const Hypothesis& a, const Hypothesis& b) { return a.log_weight < b.log_weight; });
     for (int i = 0; i < steps; ++i) {
       linearise(*heaviest, seconds(from_ns_) + dt_s * i, dt_s);
-      for (Hypothesis& h : group) apply(h, local_);
+      move(group, local_, trail);
     }
   }
   for (Hypothesis& h : group) walk(h, walks);
+  for (Hypothesis& h : trail.shadows) walk(h, walks);
 }
 
 void Motion::walk(Hypothesis& h, const Walks& walks) const {

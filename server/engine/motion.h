@@ -11,6 +11,12 @@
 
 namespace steelyard::engine {
 
+/// What predict() does to any Gaussian with a group's layout, for who must find the way back (settle.h).
+struct Trail {
+  std::span<Hypothesis> shadows;     ///< moved like the group's members, one for one
+  CoreMatrix* transition = nullptr;  ///< multiplied from the left by that of each step
+};
+
 /// Values of inputs that are not known at present wander within their range: an Ornstein–Uhlenbeck process
 /// (Uhlenbeck & Ornstein 1930) with the uniform's mean and variance and the response time as time constant.
 class Motion {
@@ -21,7 +27,7 @@ class Motion {
   void prepare(TimeNs from_ns, TimeNs to_ns, unsigned unknown_inputs);
 
   /// Moves hypotheses that differ in their machine modes alone over the prepared gap.
-  void predict(std::span<Hypothesis> group, const Walks& walks);
+  void predict(std::span<Hypothesis> group, const Walks& walks, const Trail& trail = {});
 
   [[nodiscard]] bool affine() const { return affine_; }
 
@@ -37,6 +43,7 @@ class Motion {
   void rates(const CoreVector& v, double time_s, CoreVector& out) const;
   void linearise(const Hypothesis& h, double time_s, double dt_s);
   void apply(Hypothesis& h, const Gap& gap);
+  void move(std::span<Hypothesis> group, const Gap& gap, const Trail& trail);
   void walk(Hypothesis& h, const Walks& walks) const;
   static void fade(Hypothesis& h, int at, double keeps);
   void drift(Hypothesis& h, int at, int rate, double rate_density) const;

@@ -7,6 +7,7 @@
 #include <cmath>
 
 #include "engine/normal.h"
+#include "engine/settle.h"
 #include "engine/time.h"
 
 namespace steelyard::engine {
@@ -26,9 +27,10 @@ int standing_capacity(const Model& m) { return 3 * m.options.max_hypotheses + ch
 
 }  // namespace
 
-Posterior::Posterior(std::shared_ptr<const Model> m)
-    : model(std::move(m)),
-      layout(*model),
+Posterior::Posterior(std::shared_ptr<const Model> m, bool with_lineage)
+    : Memory{std::vector<ChannelMemory>(m->channels.size()), {}},
+      model(std::move(m)),
+      layout(*model, with_lineage),
       motion(*model, layout),
       likelihood(*model, layout),
       births(*model, layout, likelihood),
@@ -36,7 +38,6 @@ Posterior::Posterior(std::shared_ptr<const Model> m)
       now(layout, standing_capacity(*model)),
       next(layout, standing_capacity(*model)),
       children(layout, children_capacity(*model)),
-      channels(model->channels.size()),
       inputs(model->inputs.size()) {
   mode_on = {model->still.on, model->still.on, true, model->jolt.on};
   absorbed.resize(static_cast<std::size_t>(now.capacity()));
@@ -72,9 +73,12 @@ Posterior::Posterior(std::shared_ptr<const Model> m)
   }
 }
 
+Posterior::~Posterior() = default;
+
 // The parts that refer to model and layout are made anew; everything that has been learned is copied.
 Posterior::Posterior(const Posterior& other)
-    : model(other.model),
+    : Memory(other),
+      model(other.model),
       layout(other.layout),
       motion(*model, layout),
       likelihood(*model, layout),
@@ -85,8 +89,6 @@ Posterior::Posterior(const Posterior& other)
       children(layout, other.children.capacity()),
       walks(other.walks),
       last_values(other.last_values),
-      spec_sd(other.spec_sd),
-      channels(other.channels),
       inputs(other.inputs),
       mode_on(other.mode_on),
       absorbed(other.absorbed.size()),
@@ -177,13 +179,16 @@ void Posterior::split_modes(double dt_s) {
   collector.normalise(next, 2 * model->options.max_hypotheses, model->options.weight_floor);
 }
 
-void Posterior::predict_next(TimeNs t) {
+void Posterior::predict_next(TimeNs t, Trails* trails) {
   split_modes(seconds(t - predicted_to));
+  if (trails) trails->start(next);
   for (TimeNs from = predicted_to; from < t;) {
     const TimeNs to = next_expiry(from, t);
     motion.prepare(from, to, unknown_inputs(from));
-    for (int begin = 0; begin < next.size(); begin = next.group_end(begin))
-      motion.predict(next.slice(begin, next.group_end(begin)), walks);
+    for (int begin = 0; begin < next.size(); begin = next.group_end(begin)) {
+      const int end = next.group_end(begin);
+      motion.predict(next.slice(begin, end), walks, trails ? trails->of_group(begin, end) : Trail{});
+    }
     from = to;
   }
 }
@@ -192,7 +197,9 @@ void Posterior::advance(TimeNs t) {
   if (!started) start(t);
   time = t;
   if (t <= predicted_to) return;
-  predict_next(t);
+  if (settler) settler->close(*this, t);
+  predict_next(t, settler ? &settler->trails() : nullptr);
+  if (settler) settler->moved(predicted_to, t, walks);
   std::swap(now, next);
   predicted_to = t;
 }
@@ -246,6 +253,7 @@ void Posterior::set_input(TimeNs t, int input, double value, bool good) {
     h.p(at, at) = u.sd * u.sd;
   }
   if (was_unknown) collector.normalise(now, now.capacity(), model->options.weight_floor);
+  if (settler) settler->input_reset(input);
   memory.good = true;
   memory.good_until = t + nanoseconds(u.period_s);
 }

@@ -29,19 +29,29 @@ struct ChannelMemory {
   std::int64_t out_of_range = 0;
 };
 
+/// What is remembered beside the hypotheses and read by reports.
+struct Memory {
+  std::vector<ChannelMemory> channels;
+  std::array<double, kMaxParts> spec_sd{};  ///< datasheet noise sd at the last reading; scales the walks
+};
+
 struct InputMemory {
   bool good = true;
   bool expires = false;
   TimeNs good_until = 0;
 };
 
-struct Posterior {
-  explicit Posterior(std::shared_ptr<const Model> model);
+class Settler;
+class Trails;
+
+struct Posterior : Memory {
+  explicit Posterior(std::shared_ptr<const Model> model, bool with_lineage = false);
   Posterior(const Posterior& other);
+  ~Posterior();
 
   void start(TimeNs t);
   /// Fills `next` with the hypotheses moved from predicted_to to t; `now` stays as it is.
-  void predict_next(TimeNs t);
+  void predict_next(TimeNs t, Trails* trails = nullptr);
   void advance(TimeNs t);
   void split_modes(double dt_s);
   [[nodiscard]] unsigned unknown_inputs(TimeNs t) const;
@@ -62,7 +72,7 @@ struct Posterior {
   [[nodiscard]] bool in_range(int channel, std::span<const double> values) const;
   [[nodiscard]] std::span<const double> last_of(int channel) const;
   void find_groups(const Occasion& o);
-  [[nodiscard]] double silent(int channel, TimeNs t) const;
+  [[nodiscard]] double silent(const ChannelMemory& memory, int channel, TimeNs t) const;
   void fuse(const Occasion& o);
   void forget_noise(const Occasion& o);
   void bear_children(const Occasion& o);
@@ -83,9 +93,7 @@ struct Posterior {
   Pool children;
   Walks walks{};
   std::array<double, kMaxParts> last_values{};  ///< of the last fused readings
-  std::array<double, kMaxParts> spec_sd{};      ///< datasheet noise sd at the last reading; scales the walks
   std::vector<Group> groups;                    ///< of the channel that reads
-  std::vector<ChannelMemory> channels;
   std::vector<InputMemory> inputs;
   std::array<bool, kModes> mode_on{};
   CoreMatrix mode_switch;  ///< P(mode after | mode before) over mode_gap_s
@@ -95,7 +103,12 @@ struct Posterior {
   TimeNs predicted_to = 0;
   TimeNs time = 0;
   double log_evidence = 0.0;
+  std::unique_ptr<Settler> settler;  ///< null: nothing is settled; not copied
 };
+
+/// What `pool` says of time t, with what was remembered then.
+void report(const Posterior& posterior, const Memory& memory, const Pool& pool, TimeNs t, Detail detail,
+            Estimate& out);
 
 struct Engine::Impl : Posterior {
   using Posterior::Posterior;

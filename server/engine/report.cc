@@ -231,8 +231,8 @@ class Precision {
   double prior_ = 0.0;
 };
 
-void report_parts(const Posterior& e, const Pool& pool, int channel, const Precision& precision,
-                  Detail detail, ChannelEstimate& out) {
+void report_parts(const Posterior& e, const Memory& memory, const Pool& pool, int channel,
+                  const Precision& precision, Detail detail, ChannelEstimate& out) {
   const auto j = static_cast<std::size_t>(channel);
   const int parts = e.layout.part_count[j];
   std::array<Gamma, kMaxParts> noise;
@@ -241,7 +241,7 @@ void report_parts(const Posterior& e, const Pool& pool, int channel, const Preci
   for (int p = 0; p < parts; ++p) {
     PartEstimate part;
     report_noise(noise[static_cast<std::size_t>(p)], e.model->options,
-                 e.spec_sd[static_cast<std::size_t>(e.layout.first_part[j] + p)], detail, part);
+                 memory.spec_sd[static_cast<std::size_t>(e.layout.first_part[j] + p)], detail, part);
     report_offset(pool, channel, p, part);
     if (p > 0) {
       out.others[static_cast<std::size_t>(p - 1)] = part;
@@ -254,12 +254,12 @@ void report_parts(const Posterior& e, const Pool& pool, int channel, const Preci
   }
 }
 
-void report_channel(const Posterior& e, const Pool& pool, int channel, TimeNs t, Detail detail,
-                    ChannelEstimate& out) {
+void report_channel(const Posterior& e, const Memory& all, const Pool& pool, int channel, TimeNs t,
+                    Detail detail, ChannelEstimate& out) {
   const auto j = static_cast<std::size_t>(channel);
   const auto& c = e.model->channels[j];
   const auto& options = e.model->options;
-  const auto& memory = e.channels[j];
+  const auto& memory = all.channels[j];
   const double gap_s = memory.fused_any ? seconds(t - memory.judged_at) : 0.0;
   const Precision precision(e, channel, options.forget ? std::exp2(-gap_s / c.memory_s) : 1.0);
   out.probability.fill(0.0);
@@ -284,9 +284,9 @@ void report_channel(const Posterior& e, const Pool& pool, int channel, TimeNs t,
     out.probability[k] = out.probability[k] * (1.0 - r.recovers) +
                          (options.conditions[k] ? sound * (1.0 - r.stays) / r.ways : 0.0);
   out.probability[0] = relaxed;
-  report_parts(e, pool, channel, precision, detail, out);
+  report_parts(e, all, pool, channel, precision, detail, out);
   out.age_s = memory.seen_any ? seconds(t - memory.seen_at) : -1.0;
-  out.silent = e.silent(channel, t);
+  out.silent = e.silent(memory, channel, t);
   out.influence = memory.freedom * std::exp(-seconds(t - memory.freedom_at) / e.model->response_s);
   out.out_of_range = memory.out_of_range;
 }
@@ -337,9 +337,8 @@ void report_explanations(const Pool& pool, const Posterior& e, std::vector<Expla
 
 // A channel is all the likelier to have gone quiet the more periods it has missed; of each, a well channel
 // may lose the reading on the way.
-double Posterior::silent(int channel, TimeNs t) const {
+double Posterior::silent(const ChannelMemory& memory, int channel, TimeNs t) const {
   const auto& c = model->channels[static_cast<std::size_t>(channel)];
-  const auto& memory = channels[static_cast<std::size_t>(channel)];
   const double period_s = c.on_change ? c.on_change->heartbeat_s : c.period_s;
   const double age_s = memory.seen_any ? seconds(t - memory.seen_at) : 0.0;
   if (!(period_s > 0.0) || age_s <= period_s) return 0.0;
@@ -348,11 +347,8 @@ double Posterior::silent(int channel, TimeNs t) const {
   return 1.0 / (1.0 + std::exp(-log_odds));
 }
 
-void Engine::estimate(TimeNs t, Detail detail, Estimate& out) {
-  Posterior& e = *impl_;
-  const bool ahead = e.started && t > e.predicted_to;
-  if (ahead) e.predict_next(t);
-  const Pool& pool = ahead ? e.next : e.now;
+void report(const Posterior& e, const Memory& memory, const Pool& pool, TimeNs t, Detail detail,
+            Estimate& out) {
   out.time_ns = t;
   out.states.resize(e.model->states.size());
   out.inputs.resize(e.model->inputs.size());
@@ -371,7 +367,7 @@ void Engine::estimate(TimeNs t, Detail detail, Estimate& out) {
     out.inputs_sd[static_cast<std::size_t>(i - e.layout.states)] = input.sd;
   }
   for (int j = 0; j < e.layout.channels; ++j)
-    report_channel(e, pool, j, t, detail, out.channels[static_cast<std::size_t>(j)]);
+    report_channel(e, memory, pool, j, t, detail, out.channels[static_cast<std::size_t>(j)]);
   share_influence(out.channels);
   out.mode.fill(0.0);
   for (int i = 0; i < pool.size(); ++i)
@@ -379,6 +375,13 @@ void Engine::estimate(TimeNs t, Detail detail, Estimate& out) {
   out.hypotheses = pool.size();
   out.explanations.clear();
   if (detail == Detail::kFull) report_explanations(pool, e, out.explanations);
+}
+
+void Engine::estimate(TimeNs t, Detail detail, Estimate& out) {
+  Posterior& e = *impl_;
+  const bool ahead = e.started && t > e.predicted_to;
+  if (ahead) e.predict_next(t);
+  report(e, e, ahead ? e.next : e.now, t, detail, out);
 }
 
 }  // namespace steelyard::engine

@@ -50,6 +50,16 @@ Timeline::Timeline(std::shared_ptr<const rig::Rig> rig)
       rank_(name_ranks(*rig_->model)),
       last_sources_(rig_->model->channels.size(), -1) {}
 
+Timeline::Timeline(std::shared_ptr<const rig::Rig> rig, engine::Detail detail,
+                   std::function<void(const engine::Estimate&)> settled)
+    : Timeline(std::move(rig)) {
+  engine::Settling settling;
+  settling.lag_ns = engine::nanoseconds(rig_->lag_s);
+  settling.detail = detail;
+  settling.settled = std::move(settled);
+  engine_ = engine::Engine(rig_->model, std::move(settling));
+}
+
 std::uint32_t Timeline::source_number(std::string_view name) {
   for (std::size_t i = 0; i < sources_.size(); ++i)
     if (sources_[i].name == name) return static_cast<std::uint32_t>(i);

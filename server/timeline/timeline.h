@@ -44,6 +44,10 @@ enum class Outcome : std::uint8_t {
 class Timeline {
  public:
   explicit Timeline(std::shared_ptr<const rig::Rig> rig);
+  /// A timeline that settles as well: `settled` is called, from within run() and settle_rest(), with the
+  /// estimate of each moment from exactly what the rig's lag after it brought.
+  Timeline(std::shared_ptr<const rig::Rig> rig, engine::Detail detail,
+           std::function<void(const engine::Estimate&)> settled);
 
   /// Finds or makes the number of a source.
   [[nodiscard]] std::uint32_t source_number(std::string_view name);
@@ -59,6 +63,9 @@ class Timeline {
 
   /// The machine now (at the newest reading), or extrapolated to t ≥ clock().
   void estimate(engine::TimeNs t, engine::Detail detail, engine::Estimate& out);
+
+  /// Settles the rest with what there is. Once, after the last run().
+  void settle_rest() { engine_.settle_rest(); }
 
   /// The rig's clock: the newest accepted reading time as stamped. Meaningless while !started().
   [[nodiscard]] engine::TimeNs clock() const;

@@ -61,7 +61,6 @@ TEST_F(CommandTest, WrongUsageIs2AndHelpIs0) {
       {"replay"},
       {"replay", "--rig", rig_},
       {"replay", "--rig", rig_, "--log", log_, "--time", "noon"},
-      {"replay", "--rig", rig_, "--log", log_, "--settled"},
       {"replay", "--rig", rig_, "--log", log_, "--report", "r.html"},
       {"replay", "--rig", rig_, "--log", log_, "--out", "same", "--episodes", "same"},
       {"replay", "--rig", rig_, "--log", log_, "--out", "same", "--channels", "same"},
@@ -259,6 +258,24 @@ TEST_F(CommandTest, ReplayWritesOneRowPerReadingTime) {
   EXPECT_EQ(lines(end.out), 1 + 2 * 200U);
   EXPECT_TRUE(has(end.out, "\n1700000000,"));
   EXPECT_TRUE(has(end.out, "\n1700000199.25,"));
+}
+
+TEST_F(CommandTest, SettledRowsStandForTheSameTimesAndKnowMore) {
+  const Finished live = replay(log_);
+  const Finished settled = replay(log_, {"--settled"});
+  EXPECT_EQ(settled.code, 0) << settled.err;
+  EXPECT_EQ(settled.err, "");
+  EXPECT_EQ(lines(settled.out), lines(live.out));
+  const auto times = [](const std::string& text) {
+    std::string out;
+    for (std::size_t i = 0; i < text.size(); i = text.find('\n', i) + 1)
+      out += text.substr(i, text.find(',', i) - i) + '\n';
+    return out;
+  };
+  EXPECT_EQ(times(settled.out), times(live.out));
+  EXPECT_NE(settled.out, live.out);
+  EXPECT_EQ(replay(log_, {"--settled", "--channels", folder_.path("c.csv")}).out, settled.out);
+  EXPECT_EQ(lines(read_file(folder_.path("c.csv"))), 1 + 2 * 2 * 200U);
 }
 
 TEST_F(CommandTest, ReplayIsTheSameBytesTwiceAndInAFile) {
