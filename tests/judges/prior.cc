@@ -14,7 +14,7 @@ using engine::Mode;
 // per √R.
 constexpr std::array<double, engine::kConditions> kWalk{0.0, 0.02, 3.5, 30.0, 0.05, 0.0};
 constexpr double kFirstRate = 1.0;
-constexpr double kRateWalk = 0.1;
+constexpr double kRateWalk = 0.03;
 constexpr double kWalkShape = 1.0;  // of the Gamma of a walk's precision, mean 1
 constexpr double kFrozenRepeats = 0.98;
 
