@@ -133,8 +133,8 @@ struct CommonCause {
   double share = 0.1;
 };
 
-/// A machine mode beside the usual one: entered every `every_s`, left after `last_s`, unrest × `times`. A still machine
-/// comes to rest as a usual one comes to be still: at the same rates, unrest × `times`² in all.
+/// A machine mode beside the usual one: entered every `every_s`, left after `last_s`, unrest × `times`. A
+/// still machine comes to rest as a usual one comes to be still: at the same rates, unrest × `times`² in all.
 struct ModeModel {
   bool on = true;
   double every_s = 20.0;

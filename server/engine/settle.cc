@@ -14,7 +14,7 @@ namespace {
 
 constexpr double kFollowed = 1e-12;  // smoothed weight under which a hypothesis is not followed further back
 constexpr double kWorthWeighing = 10.0;  // groups with so many times the negligible weight ask the future
-constexpr double kReported = 1e-20;       // and is not reported, as in Options::weight_floor
+constexpr double kReported = 1e-20;      // and is not reported, as in Options::weight_floor
 
 }  // namespace
 

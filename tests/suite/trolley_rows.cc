@@ -91,7 +91,9 @@ void add_times(std::vector<Row>& rows) {
 
 void add_groups(std::vector<Row>& rows) {
   const std::vector<bool> ab{true, true, false, false};
+  // What is left reads the speed alone: nothing tells a machine that moves from a sensor that does.
   rows.push_back(make_row("frozen a, b, c", {{kA, Kind::kFrozen}, {kB, Kind::kFrozen}, {kC, Kind::kFrozen}}));
+  rows.back().what = Class::kAmbiguous;
   Row source = make_row("frozen a, b (one source)", {{kA, Kind::kFrozen}, {kB, Kind::kFrozen}});
   source.traits = {{kA, &Channel::source, 1}, {kB, &Channel::source, 1}};
   source.declared.sources = true;
