@@ -189,9 +189,11 @@ void Stretches::close(int channel, bool open) {
                        [](const KindSeen& a, const KindSeen& b) { return a.weight_s < b.weight_s; });
   const int kind = static_cast<int>(most - one.kinds.begin());
   const bool brief = !open && gap(one.from_ns, one.to_ns) < join_ns_ / 5;
-  // The engine's beginning lies before the moment at which it came to believe in it.
+  // The engine's beginning lies before the moment at which it came to believe in it. Where it hardly did,
+  // that beginning is one of many that it weighed, and says nothing.
+  const bool believed = most->since_ns != 0 && most->then >= 0.5 && !brief;
   const TimeNs earliest = one.closed_ns.value_or(*first_ns_);
-  const TimeNs since = most->since_ns == 0 ? one.from_ns : std::max(most->since_ns, earliest);
+  const TimeNs since = believed ? std::max(most->since_ns, earliest) : one.from_ns;
   const TimeNs from = std::min(one.from_ns, since);
   if (done_.size() < most_) {
     done_.push_back({channel, from, one.to_ns, open, brief, kind, most->probability, one.unsound,

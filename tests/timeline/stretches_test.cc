@@ -219,6 +219,20 @@ TEST(Stretches, BeginWhenTheEngineSaysThatTheyDid) {
   EXPECT_EQ(all[1].from_ns, all[0].to_ns);
 }
 
+// A flicker of doubt knows no beginning.
+TEST(Stretches, ABriefOneBeginsWhereItWasSeen) {
+  Stretches stretches(1, 50 * kS);
+  for (TimeNs t = 0; t < 80; ++t) {
+    engine::Estimate estimate = at(t * kS, t == 20 ? 'o' : 's');
+    estimate.channels[0].unsound_since_ns = kS;
+    stretches.add(estimate, {});
+  }
+  const std::vector<Stretch> all = stretches.finish();
+  ASSERT_EQ(all.size(), 1U);
+  EXPECT_TRUE(all[0].brief);
+  EXPECT_EQ(all[0].from_ns, 20 * kS);
+}
+
 TEST(Stretches, AskForTheFullEstimateAndTheRivalWhereTheyAreSurest) {
   Stretches stretches(1, 5 * kS);
   engine::Estimate full;
