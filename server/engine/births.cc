@@ -25,19 +25,24 @@ double Births::rate(Condition from, Condition to, const ChannelModel& c) const {
 
 bool Births::possible(Condition to, const Occasion& o) const {
   if (!model_.options.conditions[static_cast<std::size_t>(to)]) return false;
+  // A first reading cannot show that it does not move with the machine.
+  if (to == Condition::kStuck) return !o.first;
   if (to != Condition::kFrozen) return true;
   return o.censoring == Censoring::kBetween || (o.repeated && o.censoring == Censoring::kNone);
 }
 
-// A long gap before a reading says little about when a fault struck: births are bounded to one response.
-// Before its first reading a channel may have failed at any time, and not have recovered since.
+// A long gap before a reading says little about when a fault struck: births are bounded to one response. What
+// is put to use has been commissioned, so that few channels are faulty at their first reading; were many,
+// channels that see a trend which the law lacks would all be taken for faulty from the start.
 int Births::switches(const Hypothesis& parent, const Occasion& o, double alone_share,
                      std::array<Switch, kConditions>& out, double& stays) const {
   const auto& c = model_.channels[static_cast<std::size_t>(o.channel)];
   const Condition from = parent.conditions.of(o.channel);
-  const double gap_s = o.first                     ? model_.response_s
-                       : from == Condition::kSound ? std::min(o.gap_s, model_.response_s)
-                                                   : o.gap_s;
+  constexpr double kReadingsPerResponse = 50.0;  // where no period is declared
+  constexpr double kCommissioned = 1e-3;         // of the faults of a usual gap
+  const double usual_s = c.period_s > 0.0 ? c.period_s : model_.response_s / kReadingsPerResponse;
+  const double since_s = o.first ? kCommissioned * usual_s : o.gap_s;
+  const double gap_s = from == Condition::kSound ? std::min(since_s, model_.response_s) : since_s;
   std::array<double, kConditions> rates{};
   double total = 0.0;
   for (int k = 0; k < kConditions; ++k) {

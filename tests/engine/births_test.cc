@@ -201,11 +201,11 @@ TEST(Switches, OnlyToWhatIsAllowed) {
   expect_switches(n, {{C::kOffset, kFails}});
 }
 
-TEST(Switches, BeforeAFirstReadingAFaultHasHadOneResponse) {
+TEST(Switches, AFirstReadingHasFewFaults) {
   Nursery n(6, {}, false);
   n.occasion.first = true;
   n.bear();
-  EXPECT_NEAR(n.stays, std::exp(-4.0 * kFails * n.scene->model->response_s), 1e-14);
+  EXPECT_NEAR(n.stays, std::exp(-3.0 * kFails * n.scene->model->response_s * 1e-3 / 50.0), 1e-14);
 }
 
 TEST(Switches, NoneAtAFirstReadingWhereChannelsAreBornSound) {

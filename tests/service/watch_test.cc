@@ -80,7 +80,7 @@ TEST_F(WatchTest, UpdateCarriesTheWholePicture) {
   EXPECT_NE(left.words().find("left"), std::string::npos);
   ASSERT_GE(moment.explanations_size(), 1);
   EXPECT_FALSE(moment.explanations(0).words().empty());
-  EXPECT_EQ(moment.mode_size(), 3);
+  EXPECT_EQ(moment.mode_size(), 4);
 }
 
 TEST_F(WatchTest, ChangeBringsAnUpdateAndQuietNone) {
