@@ -115,7 +115,7 @@ struct ChannelModel : PartModel {
   double memory_s = 5.0;       ///< half-life of what was learned about the noise
   double strays = 0.001;       ///< probability that a reading is a wild value
   bool live_zero = false;  ///< 4-20 mA: the timeline decodes NAMUR NE 43 failure signals (limits from memory)
-  double prior_readings = 10.0;  ///< 2·a0: how many readings the datasheet's sd is worth
+  double prior_readings = 24.0;  ///< 2·a0: how many readings the datasheet's sd is worth
 
   [[nodiscard]] int parts() const { return 1 + static_cast<int>(others.size()); }
   [[nodiscard]] const PartModel& part(int i) const {
