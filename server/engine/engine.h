@@ -38,7 +38,7 @@ struct Settling {
   Detail detail = Detail::kBrief;
   std::function<void(const Estimate&)> settled;  ///< called from within set_input(), read() and settle_rest()
   double negligible =
-      1e-6;               ///< pairs of hypotheses with less of the weight give no moments: a compute budget
+      3e-7;               ///< pairs of hypotheses with less of the weight give no moments: a compute budget
   int max_slices = 4096;  ///< distinct times within a lag; beyond, the oldest is settled early
   std::size_t max_bytes = std::size_t{256} << 20U;  ///< of all slices together; likewise
 };

@@ -165,7 +165,7 @@ struct Model {
   double freeze_share = 0.1;  ///< share of freezes that strike all channels of one source together
   double response_s = 1.0;    ///< R: time in which the machine can move noticeably
   ModeModel jolt;
-  ModeModel still{true, 20.0, 10.0, 0.25};
+  ModeModel still{true, 20.0, 10.0, 0.15};
   Options options;
 
   /// Why the engine cannot run this model (sizes beyond the bounds, a value out of its range); empty: it can.

@@ -202,7 +202,7 @@ TEST(Load, DefaultsFollowTheResponseTime) {
   EXPECT_EQ(sonic.memory_s, 300.0);
   EXPECT_EQ(sonic.strays, 0.001);
   EXPECT_DOUBLE_EQ(sonic.offset_size, 0.6);  // a tenth of the range
-  EXPECT_EQ(sonic.prior_readings, 10.0);
+  EXPECT_EQ(sonic.prior_readings, 24.0);
   EXPECT_EQ(sonic.bias_sd, 0.0);
   EXPECT_EQ(sonic.delay_s, 0.0);
 }
