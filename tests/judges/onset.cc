@@ -162,9 +162,9 @@ Table run(const Numbers& options) {
   return table;
 }
 
-// Two strays in a row are likelier, as declared, than a fault in that moment: so a third reading is awaited,
-// which the ratio without strays does not allow for.
-bool known_late(std::size_t channel, double size_sd) { return channel > 0 && size_sd >= 8.0; }
+// A jump of the speed sensor looks like a jolt until the position sensors have had their say, which the ratio
+// without jolts does not allow for.
+bool known_late(std::size_t channel, double size_sd) { return channel == 3 && size_sd >= 8.0; }
 
 // A jump of the speed alone is what a jolt does, until the positions have had time to contradict.
 bool looks_like_a_jolt(std::size_t channel, double size_sd) { return channel == 3 && size_sd <= 12.0; }
