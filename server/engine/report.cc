@@ -109,6 +109,12 @@ void report_interval(const Pool& pool, int at, const StateModel& model, StateEst
         mixture_cdf(pool, at, out.mean + *model.needs) - mixture_cdf(pool, at, out.mean - *model.needs);
 }
 
+// A mean over hypotheses is no time of a reading: digits beyond the millisecond would only look like one.
+TimeNs to_millisecond(double time_s) {
+  constexpr TimeNs kMillisecond = 1'000'000;
+  return (nanoseconds(time_s) + kMillisecond / 2) / kMillisecond * kMillisecond;
+}
+
 // Conditions relax while a channel does not read: the two-state chain of sound and not sound.
 struct Relaxation {
   double stays = 1.0;     ///< P(sound after | sound before)
@@ -275,7 +281,7 @@ void report_channel(const Posterior& e, const Memory& all, const Pool& pool, int
   const double sound = std::min(out.probability[0], 1.0);
   double unsound = 0.0;
   for (std::size_t k = 1; k < kConditions; ++k) unsound += out.probability[k];
-  out.unsound_since_ns = unsound > kNegligible ? nanoseconds(since_s / unsound) : 0;
+  out.unsound_since_ns = unsound > kNegligible ? to_millisecond(since_s / unsound) : 0;
   const Relaxation r = relax(c, options, gap_s);
   const double fresh = (1.0 - sound) * r.recovers;
   const double relaxed = sound * r.stays + fresh;
@@ -305,7 +311,7 @@ void report_findings(const Hypothesis& h, const Posterior& e, std::vector<Findin
     if (condition == Condition::kSound) continue;
     for (int p = 0; p < e.layout.part_count[u]; ++p) {
       const int at = h.own_at[u] < 0 ? -1 : h.own_at[u] + p;
-      Finding f{j, condition, 0.0, 0.0, p, nanoseconds(h.since[j])};
+      Finding f{j, condition, 0.0, 0.0, p, to_millisecond(h.since[j])};
       f.offset = at >= 0 ? h.mean[at] : e.last_values[static_cast<std::size_t>(e.layout.first_part[u] + p)];
       f.offset_sd = at >= 0 ? std::sqrt(std::max(h.p(at, at), 0.0)) : 0.0;
       out.push_back(f);
