@@ -17,8 +17,7 @@ bool Row::misdeclares(int channel) const {
     if (t.channel != channel) return false;
     // A declared correlation tells of a damping's noise, not of the lag that the damping has as well.
     return (t.field == &Channel::deadband && !declared.on_change) || t.field == &Channel::holds ||
-           t.field == &Channel::damping_s ||
-           (t.field == &Channel::time_jitter_s && !declared.time_sd);
+           t.field == &Channel::damping_s || (t.field == &Channel::time_jitter_s && !declared.time_sd);
   });
 }
 
