@@ -243,6 +243,13 @@ class Report {
     line("\nthe machine's disturbances");
     mode("jolted", model_.jolt);
     mode("still", model_.still);
+    if (model_.still.on) resting();
+  }
+
+  // A still machine comes to rest as a usual one comes to be still.
+  void resting() {
+    line("  resting: of a still machine, as often and as long, unrest times " +
+         number(model_.still.times * model_.still.times));
   }
 
   void mode(const char* name, const engine::ModeModel& mode) {
