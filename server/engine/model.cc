@@ -2,8 +2,9 @@
 // Bounds of a model, and the defaults in terms of the response time (engine.md §6).
 #include "engine/model.h"
 
-#include <Eigen/Dense>
 #include <cmath>
+
+#include "engine/vector_reading.h"
 
 namespace steelyard::engine {
 namespace {
@@ -35,14 +36,6 @@ std::string part_problem(const PartModel& p, const std::string& at, const Model&
   if (!(p.bias_sd >= 0.0)) return at + ".bias_sd: must not be negative";
   if (!positive(p.offset_size)) return at + ".offset_size: must be greater than 0";
   return {};
-}
-
-Eigen::MatrixXd part_correlations(const ChannelModel& c) {
-  Eigen::MatrixXd m = Eigen::MatrixXd::Identity(c.parts(), c.parts());
-  std::size_t next = 0;
-  for (int i = 0; i < c.parts() && !c.part_correlation.empty(); ++i)
-    for (int k = i + 1; k < c.parts(); ++k) m(i, k) = m(k, i) = c.part_correlation[next++];
-  return m;
 }
 
 std::string vector_problem(const ChannelModel& c, const std::string& at) {

@@ -53,6 +53,14 @@ double variance_shape(double a, Eigen::Index parts) { return a - 0.5 * static_ca
 
 }  // namespace
 
+Eigen::MatrixXd part_correlations(const ChannelModel& channel) {
+  Eigen::MatrixXd m = Eigen::MatrixXd::Identity(channel.parts(), channel.parts());
+  std::size_t next = 0;
+  for (int i = 0; i < channel.parts() && !channel.part_correlation.empty(); ++i)
+    for (int k = i + 1; k < channel.parts(); ++k) m(i, k) = m(k, i) = channel.part_correlation[next++];
+  return m;
+}
+
 double prior_shape(const ChannelModel& channel) {
   return 0.5 * (channel.prior_readings + static_cast<double>(channel.parts() - 1));
 }
@@ -62,11 +70,7 @@ VectorReading::VectorReading(const Model& model, const Layout& layout, const Pro
   for (std::size_t j = 0; j < model.channels.size(); ++j) {
     const auto& c = model.channels[j];
     if (c.parts() == 1) continue;
-    PartsMatrix correlation = PartsMatrix::Identity(c.parts(), c.parts());
-    std::size_t next = 0;
-    for (int i = 0; i < c.parts() && !c.part_correlation.empty(); ++i)
-      for (int k = i + 1; k < c.parts(); ++k)
-        correlation(i, k) = correlation(k, i) = c.part_correlation[next++];
+    const PartsMatrix correlation = part_correlations(c);
     correlation_root_[j] = correlation.llt().matrixL();
   }
 }

@@ -24,6 +24,9 @@ using PartsMatrix =
     Eigen::Matrix<double, Eigen::Dynamic, Eigen::Dynamic, Eigen::ColMajor, kMaxParts, kMaxParts>;
 using PartsVector = Eigen::Matrix<double, Eigen::Dynamic, 1, Eigen::ColMajor, kMaxParts, 1>;
 
+/// Correlation matrix of the noise of a channel's parts.
+[[nodiscard]] Eigen::MatrixXd part_correlations(const ChannelModel& channel);
+
 /// Prior Wishart's ν/2 of a vector channel (for a scalar channel: the Gamma's shape).
 [[nodiscard]] double prior_shape(const ChannelModel& channel);
 
